@@ -1,0 +1,104 @@
+# Two commands matter: `make demo` and `make test`. Each installs what it needs, builds and runs.
+# Others: demo-once, build, bench, format, lint, deps, install.
+
+SHELL := /bin/bash
+MODE ?= release
+OUT ?= build
+B := $(OUT)/$(MODE)
+CC ?= gcc
+
+WARN := -Wall -Wextra -Wpedantic -Wconversion -Wshadow -Wstrict-prototypes -Wmissing-prototypes \
+	-Wvla -Wformat=2 -Werror
+CPPFLAGS += -D_GNU_SOURCE -Iinclude -I$(B)/generated
+CFLAGS_release := -O2 -g -D_FORTIFY_SOURCE=2 -fstack-protector-strong
+CFLAGS_sanitize := -O1 -g -fsanitize=address,undefined -fno-sanitize-recover=all \
+	-fno-omit-frame-pointer
+LDFLAGS_release := -Wl,-z,relro,-z,now
+LDFLAGS_sanitize := -fsanitize=address,undefined
+CFLAGS_ALL := -std=c17 -fPIE -ffp-contract=off -pthread $(WARN) $(CFLAGS_$(MODE)) $(CFLAGS)
+LDFLAGS_ALL := -pie -pthread $(LDFLAGS_$(MODE)) $(LDFLAGS)
+
+# What each room may stand on. A room links against these and nothing else in its unit tests, so an
+# arrow that points up does not link.
+ROOMS := cli api http campaign export store lightcurve consensus ephemeris base
+NEEDS_base :=
+NEEDS_lightcurve := base
+NEEDS_consensus := base
+NEEDS_ephemeris := base
+NEEDS_store := base
+NEEDS_export := base
+NEEDS_http := base
+NEEDS_campaign := store export lightcurve consensus ephemeris base
+NEEDS_api := http $(NEEDS_campaign) campaign
+NEEDS_cli := api http campaign $(NEEDS_campaign)
+
+LIBS_base := -lsodium -lm
+LIBS_lightcurve := -lcfitsio -larchive -lgsl -lgslcblas -lz
+LIBS_ephemeris := -lgsl -lgslcblas
+LIBS_consensus := -lgsl -lgslcblas
+LIBS_store := -lsqlite3 -lz
+LIBS_export :=
+LIBS_http := -lmicrohttpd -ljansson -lz
+LIBS_campaign := -ljansson -lunistring -lz
+LIBS_api := -ljansson
+LIBS_cli := -lcurl -ljansson
+
+LIBS_ALL := $(foreach r,$(ROOMS),$(LIBS_$(r)))
+
+sources = $(sort $(wildcard server/$(1)/*.c))
+objects = $(patsubst %.c,$(B)/%.o,$(call sources,$(1)))
+archive = $(B)/room-$(1).a
+
+.PHONY: all build deps deps-test demo demo-once test bench evaluate format lint install clean
+all: build
+build: $(B)/ebbmark
+
+define room_rules
+$(call archive,$(1)): $(call objects,$(1))
+	@rm -f $$@
+	@mkdir -p $$(@D)
+	$$(AR) rcsD $$@ $$^
+endef
+$(foreach r,$(ROOMS),$(eval $(call room_rules,$(r))))
+
+$(B)/%.o: %.c
+	@mkdir -p $(@D)
+	$(CC) $(CPPFLAGS) $(CFLAGS_ALL) -MMD -MP -c $< -o $@
+
+# web/ and migrations/ are carried inside the program, so that it is one file.
+$(B)/generated/web_files.c: $(sort $(shell find web -type f ! -path '*/node_modules/*')) server/api/embed-web.sh
+	@mkdir -p $(@D)
+	server/api/embed-web.sh web $(B)/generated > $@.part && mv $@.part $@
+$(B)/generated/migrations.c: $(sort $(wildcard migrations/*.sql)) server/store/embed-migrations.sh
+	@mkdir -p $(@D)
+	server/store/embed-migrations.sh migrations > $@.part && mv $@.part $@
+$(B)/generated/%.o: $(B)/generated/%.c
+	$(CC) $(CPPFLAGS) $(CFLAGS_ALL) -c $< -o $@
+$(call archive,store): $(B)/generated/migrations.o
+$(call archive,api): $(B)/generated/web_files.o
+
+$(B)/ebbmark: $(B)/server/main.o $(foreach r,$(ROOMS),$(call archive,$(r)))
+	$(CC) $(LDFLAGS_ALL) $< -Wl,--start-group $(foreach r,$(ROOMS),$(call archive,$(r))) -Wl,--end-group \
+		$(LIBS_ALL) -o $@
+
+# Unit tests: tests/unit/<room>/<name>.c links against that room and what it stands on.
+unit_sources := $(sort $(wildcard tests/unit/*/*.c))
+unit_programs := $(patsubst %.c,$(B)/%,$(unit_sources))
+define unit_rule
+$(B)/tests/unit/$(1)/%: tests/unit/$(1)/%.c $(call archive,$(1)) $(foreach r,$(NEEDS_$(1)),$(call archive,$(r)))
+	@mkdir -p $$(@D)
+	$$(CC) $$(CPPFLAGS) -Itests/unit $$(CFLAGS_ALL) -MMD -MP $$(LDFLAGS_ALL) $$< \
+		-Wl,--start-group $(call archive,$(1)) $(foreach r,$(NEEDS_$(1)),$(call archive,$(r))) -Wl,--end-group \
+		-lcmocka $$(LIBS_$(1)) $(foreach r,$(NEEDS_$(1)),$$(LIBS_$(r))) -o $$@
+endef
+$(foreach r,$(ROOMS),$(eval $(call unit_rule,$(r))))
+.PHONY: unit-programs
+unit-programs: $(unit_programs)
+
+format:
+	clang-format -i $$(git ls-files 'server/*.c' 'server/*.h' 'include/*.h' 'tests/*.c' 'tests/*.h')
+
+clean:
+	rm -rf $(OUT)
+
+-include $(shell find $(B) -name '*.d' 2>/dev/null)
