@@ -95,6 +95,26 @@ $(foreach r,$(ROOMS),$(eval $(call unit_rule,$(r))))
 .PHONY: unit-programs
 unit-programs: $(unit_programs)
 
+# Drivers of the reference checks and benches: tests/reference/<name>.c and tests/bench/<name>.c link the
+# whole program but its main.
+whole_rooms := $(filter-out cli api,$(ROOMS))
+define driver_rule
+$(B)/tests/$(1)/%: tests/$(1)/%.c $(foreach r,$(whole_rooms),$(call archive,$(r)))
+	@mkdir -p $$(@D)
+	$$(CC) $$(CPPFLAGS) $$(CFLAGS_ALL) -MMD -MP $$(LDFLAGS_ALL) $$< \
+		-Wl,--start-group $(foreach r,$(whole_rooms),$(call archive,$(r))) -Wl,--end-group \
+		$$(LIBS_ALL) -o $$@
+endef
+$(foreach d,bench,$(eval $(call driver_rule,$(d))))
+
+# Reference drivers stand on the pure rooms only.
+pure_rooms := lightcurve consensus ephemeris export base
+$(B)/tests/reference/%: tests/reference/%.c $(foreach r,$(pure_rooms),$(call archive,$(r)))
+	@mkdir -p $(@D)
+	$(CC) $(CPPFLAGS) $(CFLAGS_ALL) -MMD -MP $(LDFLAGS_ALL) $< \
+		-Wl,--start-group $(foreach r,$(pure_rooms),$(call archive,$(r))) -Wl,--end-group \
+		$(foreach r,$(pure_rooms),$(LIBS_$(r))) -lz -o $@
+
 format:
 	clang-format -i $$(git ls-files 'server/*.c' 'server/*.h' 'include/*.h' 'tests/*.c' 'tests/*.h')
 

@@ -38,11 +38,11 @@ bool campaign_setting_change(struct campaign *campaign, const char *name, const 
 #define CAMPAIGN_PASSPHRASE_BYTES_MAX 512
 #define CAMPAIGN_SECRET_SIZE 44 /* base64 text of 32 random bytes, with NUL */
 
-/* Check a handle and make its key (NFKC, case folded, in `key`, 256 bytes). BASE_INVALID: empty, over
- * CAMPAIGN_HANDLE_CHARACTERS_MAX, controls, or blanks at the ends. */
+/* Check a handle and make its key (NFKC, case folded, in `key`, 256 bytes). BASE_INVALID: empty,
+ * over CAMPAIGN_HANDLE_CHARACTERS_MAX, controls, or blanks at the ends. */
 bool campaign_handle_key(const char *handle, char key[256], struct base_error *error);
-/* Join. passphrase NULL makes a guest. handle NULL gives a guest an invented one. BASE_CONFLICT when
- * the handle is taken, BASE_DENIED when the campaign is not open. Slow: argon2id. */
+/* Join. passphrase NULL makes a guest. handle NULL gives a guest an invented one. BASE_CONFLICT
+ * when the handle is taken, BASE_DENIED when the campaign is not open. Slow: argon2id. */
 bool campaign_join(struct campaign *campaign, const char *handle, const char *passphrase,
                    struct base_arena *arena, struct store_person *out, struct base_error *error);
 /* Add a person of any role, by an admin's hand; passphrase may be NULL. */
@@ -72,10 +72,10 @@ struct campaign_load_progress {
     double seconds, points_per_second, seconds_left; /* NAN until known */
 };
 struct campaign_load_options {
-    const char *batch;              /* its name */
-    const char *const *paths;       /* path_count of them */
+    const char *batch;        /* its name */
+    const char *const *paths; /* path_count of them */
     size_t path_count;
-    const char *catalogue;          /* path, or NULL */
+    const char *catalogue; /* path, or NULL */
     struct lightcurve_mapping mapping;
     /* Called now and then from the loading thread; false cancels. May be NULL. */
     bool (*progress)(void *context, const struct campaign_load_progress *progress);
@@ -83,10 +83,10 @@ struct campaign_load_options {
     void (*refused)(void *context, const char *label, const char *reason);
     void *context;
 };
-/* Load paths as a batch, or go on with an unfinished batch of that name: files whose bytes are there
- * already are passed over as repeated. Reading, cleaning and trends run on the pool; files are stored
- * in groups, each in one transaction. BASE_CANCELLED and BASE_DISK_FULL leave a batch that a second
- * call resumes. True even when some files were refused (progress.files_refused). */
+/* Load paths as a batch, or go on with an unfinished batch of that name: files whose bytes are
+ * there already are passed over as repeated. Reading, cleaning and trends run on the pool; files
+ * are stored in groups, each in one transaction. BASE_CANCELLED and BASE_DISK_FULL leave a batch
+ * that a second call resumes. True even when some files were refused (progress.files_refused). */
 bool campaign_load(struct campaign *campaign, const struct campaign_load_options *options,
                    struct campaign_load_progress *result, struct base_error *error);
 
@@ -95,12 +95,13 @@ bool campaign_load(struct campaign *campaign, const struct campaign_load_options
 #define CAMPAIGN_LEASE_SIZE 140 /* text of a lease, with NUL */
 
 struct campaign_lease {
-    char text[CAMPAIGN_LEASE_SIZE]; /* sealed: person, segment, end and a nonce; holds over a restart */
+    char text[CAMPAIGN_LEASE_SIZE]; /* sealed: person, segment, end and a nonce; holds over a
+                                       restart */
     int64_t expires_ms;
     struct store_segment segment;
 };
-/* Hand out the open segment that needs a look most and that this person has not seen. *found is false
- * when nothing is left for them. O(log n) on average. */
+/* Hand out the open segment that needs a look most and that this person has not seen. *found is
+ * false when nothing is left for them. O(log n) on average. */
 bool campaign_lease_take(struct campaign *campaign, struct base_arena *arena, int64_t person,
                          struct campaign_lease *out, bool *found, struct base_error *error);
 struct campaign_lease_read {
@@ -111,7 +112,8 @@ struct campaign_lease_read {
 /* Open a lease's seal. BASE_INVALID when it is not one of ours. */
 bool campaign_lease_open(struct campaign *campaign, const char *text,
                          struct campaign_lease_read *out, struct base_error *error);
-/* Has this person a lease, live or lately ended, or a review on the segment? Then they may see it. */
+/* Has this person a lease, live or lately ended, or a review on the segment? Then they may see it.
+ */
 bool campaign_may_see(struct campaign *campaign, int64_t person, int64_t segment);
 
 enum campaign_view { CAMPAIGN_AS_MEASURED = 0, CAMPAIGN_TREND_REMOVED = 1 };
@@ -131,7 +133,8 @@ bool campaign_flux_read(struct campaign *campaign, struct base_arena *arena,
 
 /* Hand a review to the writer. It gathers what is waiting into one transaction and then calls
  * done(context, ok, error) on its own thread, after the commit, exactly once; `review` and what it
- * points to must live until then. False (BASE_BUSY) when too many are waiting: done is not called. */
+ * points to must live until then. False (BASE_BUSY) when too many are waiting: done is not called.
+ */
 bool campaign_review_submit(struct campaign *campaign, struct store_review_new *review,
                             void (*done)(void *context, bool ok, const struct base_error *error),
                             void *context, struct base_error *error);
@@ -153,8 +156,8 @@ bool campaign_reviews_add_file(struct campaign *campaign, const char *path,
 
 /* ---- consensus --------------------------------------------------------------------------- */
 
-/* Run over all reviews up to the newest, store the run, make it current. One at a time: BASE_BUSY when
- * another is at work. progress(context, fraction 0…1, stage) may be NULL. */
+/* Run over all reviews up to the newest, store the run, make it current. One at a time: BASE_BUSY
+ * when another is at work. progress(context, fraction 0…1, stage) may be NULL. */
 bool campaign_run(struct campaign *campaign,
                   void (*progress)(void *context, double fraction, const char *stage),
                   void *context, int64_t *run, struct base_error *error);
@@ -182,6 +185,11 @@ struct campaign_run_state campaign_run_state_now(struct campaign *campaign);
 
 /* ---- tables ------------------------------------------------------------------------------ */
 
-enum campaign_table { CAMPAIGN_CANDIDATES, CAMPAIGN_REVIEWERS, CAMPAIGN_REVIEWS, CAMPAIGN_COMPLETENESS };
+enum campaign_table {
+    CAMPAIGN_CANDIDATES,
+    CAMPAIGN_REVIEWERS,
+    CAMPAIGN_REVIEWS,
+    CAMPAIGN_COMPLETENESS
+};
 
 #endif

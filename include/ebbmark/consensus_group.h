@@ -9,17 +9,17 @@
 
 #include "ebbmark/error.h"
 
-#define CONSENSUS_GROUP_CUT 0.75       /* average 1 - IoU at which a merge stops */
-#define CONSENSUS_GROUP_RUN_MAX 2000   /* a longer run of overlapping marks is split by a sweep */
+#define CONSENSUS_GROUP_CUT 0.75     /* average 1 - IoU at which a merge stops */
+#define CONSENSUS_GROUP_RUN_MAX 2000 /* a longer run of overlapping marks is split by a sweep */
 
 /* One mark. All marks given to one call are of one star and one time reference. */
 struct consensus_mark {
-    int64_t id;      /* the store's mark id; ascending ids are older */
-    int64_t review;  /* marks of one review never share a group */
-    int32_t person;  /* index of the reviewer, from 0 */
+    int64_t id;              /* the store's mark id; ascending ids are older */
+    int64_t review;          /* marks of one review never share a group */
+    int32_t person;          /* index of the reviewer, from 0 */
     double starts_d, ends_d; /* finite, starts < ends */
-    double weight;   /* >= 0; skill, 1 where unknown: weighs the medians */
-    int8_t sure;     /* 1 sure, 0 unsure */
+    double weight;           /* >= 0; skill, 1 where unknown: weighs the medians */
+    int8_t sure;             /* 1 sure, 0 unsure */
 };
 
 /* Sort marks by (starts, ends, id) and give each a group number, 0 … *groups-1, in order of the

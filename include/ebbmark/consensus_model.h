@@ -26,10 +26,10 @@ struct consensus_item {
 
 /* One reviewer's look at one group (everyone whose review's segment covers at least half of it). */
 struct consensus_look {
-    int32_t person;  /* 0 … people-1 */
-    uint8_t marked;  /* 1: one of their marks is in the group */
-    uint8_t sure;    /* certainty of that mark; 0 when not marked */
-    float centre_d;  /* centre of the mark minus the group's mid-time, d; 0 when not marked */
+    int32_t person; /* 0 … people-1 */
+    uint8_t marked; /* 1: one of their marks is in the group */
+    uint8_t sure;   /* certainty of that mark; 0 when not marked */
+    float centre_d; /* centre of the mark minus the group's mid-time, d; 0 when not marked */
 };
 
 struct consensus_input {
@@ -60,9 +60,9 @@ struct consensus_skill {
 };
 
 struct consensus_answer {
-    double probability;            /* P(dip) in [0, 1] */
-    double log_odds;               /* natural log */
-    double marks_only_probability; /* without the photometry's say */
+    double probability;                                 /* P(dip) in [0, 1] */
+    double log_odds;                                    /* natural log */
+    double marks_only_probability;                      /* without the photometry's say */
     double term_looks, term_time, term_snr, term_prior; /* they add up to log_odds */
 };
 

@@ -9,18 +9,18 @@
 
 enum base_error_kind {
     BASE_NONE = 0,
-    BASE_INVALID,     /* the input is at fault; the field names what, where that is known */
-    BASE_DENIED,      /* known person, not allowed */
-    BASE_NOT_FOUND,   /* no such thing */
-    BASE_CONFLICT,    /* it clashes with what is there already */
-    BASE_TOO_LARGE,   /* over a named limit; the sentence states the limit */
-    BASE_DISK_FULL,   /* no space left; nothing was half stored */
-    BASE_BUSY,        /* overloaded or locked; the same call may succeed later */
-    BASE_MEMORY,      /* an allocation failed or an arena reached its limit */
-    BASE_IO,          /* the disk or the network failed */
-    BASE_CORRUPT,     /* stored data is not what was written */
-    BASE_CANCELLED,   /* somebody asked for the work to stop */
-    BASE_INTERNAL     /* a fault of the program itself */
+    BASE_INVALID,   /* the input is at fault; the field names what, where that is known */
+    BASE_DENIED,    /* known person, not allowed */
+    BASE_NOT_FOUND, /* no such thing */
+    BASE_CONFLICT,  /* it clashes with what is there already */
+    BASE_TOO_LARGE, /* over a named limit; the sentence states the limit */
+    BASE_DISK_FULL, /* no space left; nothing was half stored */
+    BASE_BUSY,      /* overloaded or locked; the same call may succeed later */
+    BASE_MEMORY,    /* an allocation failed or an arena reached its limit */
+    BASE_IO,        /* the disk or the network failed */
+    BASE_CORRUPT,   /* stored data is not what was written */
+    BASE_CANCELLED, /* somebody asked for the work to stop */
+    BASE_INTERNAL   /* a fault of the program itself */
 };
 
 #define BASE_SENTENCE_SIZE 480

@@ -38,8 +38,8 @@ struct export_table {
     size_t column_count;
 };
 
-/* Facts about the whole table (run, time reference, caution …), written where the format has a place:
- * JSON "about", VOTable INFO, FITS header cards; CSV has none and stays a plain table. */
+/* Facts about the whole table (run, time reference, caution …), written where the format has a
+ * place: JSON "about", VOTable INFO, FITS header cards; CSV has none and stays a plain table. */
 struct export_fact {
     const char *name, *value;
 };
@@ -64,6 +64,7 @@ void export_close(struct export_writer *writer);
 
 /* "csv", "json", "votable", "fits"; false for anything else. */
 bool export_format_read(const char *name, enum export_format *out);
-const char *export_media_type(enum export_format format); /* "text/csv; charset=utf-8; header=present" … */
+const char *
+export_media_type(enum export_format format); /* "text/csv; charset=utf-8; header=present" … */
 
 #endif

@@ -1,10 +1,11 @@
 /*
  * The HTTP server: libmicrohttpd's epoll with a thread pool behind one readable pipeline (accept,
  * read, sign-in, limit, route, handle, answer, log). The only room that includes microhttpd.h. It
- * knows nothing of the campaign: who a cookie or token belongs to is asked of a function it is given.
+ * knows nothing of the campaign: who a cookie or token belongs to is asked of a function it is
+ * given.
  *
- * Threads: a handler runs on one thread, either one of the server's own (quick handlers) or a worker
- * (HTTP_SLOW); an exchange belongs to that handler until it answers. A handler that returned
+ * Threads: a handler runs on one thread, either one of the server's own (quick handlers) or a
+ * worker (HTTP_SLOW); an exchange belongs to that handler until it answers. A handler that returned
  * HTTP_LATER hands its exchange over to whoever calls http_resume, exactly once.
  */
 #ifndef EBBMARK_HTTP_H
@@ -31,25 +32,25 @@ enum http_result {
 };
 
 enum http_flags {
-    HTTP_SLOW = 1,      /* runs on a worker: reads much, hashes a passphrase, writes */
-    HTTP_NO_CSRF = 2    /* a change that needs no Ebbmark-Request header (none by default) */
+    HTTP_SLOW = 1,   /* runs on a worker: reads much, hashes a passphrase, writes */
+    HTTP_NO_CSRF = 2 /* a change that needs no Ebbmark-Request header (none by default) */
 };
 
-/* A route stands beside its handler. `path` may hold {names}. Changes (POST, PATCH, DELETE) that come
- * with a session cookie need the header `Ebbmark-Request: 1`, else 403. */
+/* A route stands beside its handler. `path` may hold {names}. Changes (POST, PATCH, DELETE) that
+ * come with a session cookie need the header `Ebbmark-Request: 1`, else 403. */
 struct http_route {
     const char *method; /* "GET" also serves HEAD */
     const char *path;   /* "/api/v1/segments/{id}/flux" */
     enum http_who who;
     unsigned flags;
-    size_t body_limit;  /* bytes; 0: no body allowed */
+    size_t body_limit; /* bytes; 0: no body allowed */
     enum http_result (*handle)(struct http_exchange *exchange, void *context);
 };
 
 struct http_identity {
     int64_t person; /* 0: nobody */
     enum http_who role;
-    bool by_token;  /* Authorization: Bearer, not a cookie */
+    bool by_token; /* Authorization: Bearer, not a cookie */
     bool suspended;
     int64_t ends_ms;
 };
@@ -70,17 +71,19 @@ struct http_static_file { /* a file of web/, embedded at build time */
 };
 
 struct http_options {
-    const char *listen;          /* "127.0.0.1:8080", "[::1]:0" (0: any free port) */
-    unsigned threads;            /* epoll threads, default 2 */
-    unsigned workers;            /* for HTTP_SLOW, default 4 */
-    size_t waiting_max;          /* HTTP_SLOW exchanges waiting; past that 503 with Retry-After */
-    unsigned connections_max;    /* default 12000 */
-    unsigned timeout_s;          /* idle connection, default 30 */
-    double person_rate, person_burst;   /* requests a second a person; 0: no limit */
-    double address_rate, address_burst; /* a second an address, not for loopback w/o trusted proxy */
+    const char *listen;       /* "127.0.0.1:8080", "[::1]:0" (0: any free port) */
+    unsigned threads;         /* epoll threads, default 2 */
+    unsigned workers;         /* for HTTP_SLOW, default 4 */
+    size_t waiting_max;       /* HTTP_SLOW exchanges waiting; past that 503 with Retry-After */
+    unsigned connections_max; /* default 12000 */
+    unsigned timeout_s;       /* idle connection, default 30 */
+    double person_rate, person_burst; /* requests a second a person; 0: no limit */
+    double address_rate,
+        address_burst; /* a second an address, not for loopback w/o trusted proxy */
     const char *const *trusted_proxies; /* CIDRs whose X-Forwarded-For is believed; NULL-ended */
     const char *tls_cert, *tls_key;     /* PEM files, or NULL */
-    const struct http_route *const *routes; /* tables, NULL-ended; each table ends with a NULL method */
+    const struct http_route *const
+        *routes; /* tables, NULL-ended; each table ends with a NULL method */
     const struct http_static_file *files;
     size_t file_count;
     const char *cookie_name; /* "ebbmark_session" */
@@ -105,8 +108,9 @@ struct base_arena *http_arena(struct http_exchange *exchange); /* freed after th
 const struct http_identity *http_identity(const struct http_exchange *exchange);
 const char *http_request_id(const struct http_exchange *exchange);
 struct http_server *http_server_of(struct http_exchange *exchange);
-const char *http_path_part(struct http_exchange *exchange, const char *name); /* decoded; never NULL */
-const char *http_query(struct http_exchange *exchange, const char *name); /* decoded, or NULL */
+const char *http_path_part(struct http_exchange *exchange,
+                           const char *name);                              /* decoded; never NULL */
+const char *http_query(struct http_exchange *exchange, const char *name);  /* decoded, or NULL */
 const char *http_header(struct http_exchange *exchange, const char *name); /* or NULL */
 const void *http_body(struct http_exchange *exchange, size_t *size);
 /* The session cookie's value or the bearer token as sent, or NULL. */
@@ -115,15 +119,18 @@ const char *http_secret(struct http_exchange *exchange);
 bool http_is_secure(struct http_exchange *exchange);
 /* The caller's address, after trusted proxies. */
 const char *http_address(struct http_exchange *exchange);
-/* The body as a JSON object (owned by the exchange). False: a problem was answered already (400 with
- * line and column, 415 when the Content-Type is not application/json), so return HTTP_ANSWERED. */
+/* The body as a JSON object (owned by the exchange). False: a problem was answered already (400
+ * with line and column, 415 when the Content-Type is not application/json), so return
+ * HTTP_ANSWERED. */
 bool http_body_json(struct http_exchange *exchange, json_t **out);
-/* A whole number in the query within [least, most], or `fallback` when absent. False: answered 422. */
+/* A whole number in the query within [least, most], or `fallback` when absent. False: answered 422.
+ */
 bool http_query_integer(struct http_exchange *exchange, const char *name, int64_t least,
                         int64_t most, int64_t fallback, int64_t *out);
 bool http_query_real(struct http_exchange *exchange, const char *name, double least, double most,
                      double fallback, double *out);
-/* Does the Accept header (or its absence) allow this media type, and which of several is preferred? */
+/* Does the Accept header (or its absence) allow this media type, and which of several is preferred?
+ */
 int http_accept_best(struct http_exchange *exchange, const char *const *types, size_t count);
 
 /* ---- answering ---------------------------------------------------------------------------- */
@@ -151,16 +158,17 @@ size_t http_kept_size(const struct http_kept_body *body); /* bytes held, both fo
 /* 200, or 304 when If-None-Match has its ETag. */
 enum http_result http_answer_kept(struct http_exchange *exchange, struct http_kept_body *body);
 
-/* A stream pulled as the client reads: next() writes at most `room` bytes, returns how many, 0 at the
- * end, -1 on failure (the connection is then cut, so that a short file is not taken for a whole one).
- * done() is called once, whatever happens. */
+/* A stream pulled as the client reads: next() writes at most `room` bytes, returns how many, 0 at
+ * the end, -1 on failure (the connection is then cut, so that a short file is not taken for a whole
+ * one). done() is called once, whatever happens. */
 enum http_result http_answer_stream(struct http_exchange *exchange, unsigned status,
                                     const char *media_type,
                                     long (*next)(void *state, char *buffer, size_t room),
                                     void (*done)(void *state), void *state);
 
-/* A problem (RFC 9457). `kind` is one of the table in http/problems.def ("invalid", "expired_lease");
- * the type is "/problems/<kind>", title and status come from the table. field may be NULL. */
+/* A problem (RFC 9457). `kind` is one of the table in http/problems.def ("invalid",
+ * "expired_lease"); the type is "/problems/<kind>", title and status come from the table. field may
+ * be NULL. */
 enum http_result http_answer_problem(struct http_exchange *exchange, const char *kind,
                                      const char *field, const char *detail_format, ...)
     __attribute__((format(printf, 4, 5)));
@@ -171,7 +179,8 @@ enum http_result http_answer_error(struct http_exchange *exchange, const struct 
 /* Several fields at fault, 422: [{"field","detail"}…]. */
 enum http_result http_answer_fields(struct http_exchange *exchange, json_t *fields);
 
-/* After HTTP_LATER: the answer was set by the calls above; send it. From any thread, exactly once. */
+/* After HTTP_LATER: the answer was set by the calls above; send it. From any thread, exactly once.
+ */
 void http_resume(struct http_exchange *exchange);
 
 #endif

@@ -47,11 +47,11 @@ struct lightcurve {
     struct lightcurve_star star;
     char time_reference[LIGHTCURVE_REFERENCE_SIZE];
     size_t count;
-    double *time;         /* d */
-    double *flux;         /* relative, median 1 */
-    double *error;        /* relative, one sigma */
-    double median_flux;   /* in the file's unit, before division */
-    double cadence_d;     /* median step */
+    double *time;       /* d */
+    double *flux;       /* relative, median 1 */
+    double *error;      /* relative, one sigma */
+    double median_flux; /* in the file's unit, before division */
+    double cadence_d;   /* median step */
     size_t dropped_nonfinite, dropped_flagged, dropped_repeats;
 };
 void lightcurve_free(struct lightcurve *curve);

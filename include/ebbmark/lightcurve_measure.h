@@ -30,8 +30,7 @@ struct lightcurve_noise {
 /* Noise of trend-removed flux (about 1). After Pont, Zucker & Queloz 2006: the scatter of means
  * over the window holds the correlated part. A window needs at least half its points. */
 bool lightcurve_noise_measure(const double *time, const double *flat, size_t n, double cadence_d,
-                              double gap_d, struct lightcurve_noise *out,
-                              struct base_error *error);
+                              double gap_d, struct lightcurve_noise *out, struct base_error *error);
 
 /* Error (relative, one sigma) of the mean flux over a dip that lasts duration_d and holds
  * `points` cadences: the windowed scatter interpolated in log length, never below
@@ -53,9 +52,9 @@ struct lightcurve_dip {
     double chi2, chi2_box;               /* of the kept fit and of the box */
     size_t points, points_in;            /* fitted, and inside T14 */
     double covered;                      /* fraction of T14 covered by data, 0 to 1 */
-    double gap_distance_d;               /* from T14's nearer end to the nearest gap or end of data */
-    double v_shape;   /* 0 flat-bottomed, 1 V: 2 x ingress_fraction */
-    double asymmetry; /* (mean of second half - mean of first half) / depth */
+    double gap_distance_d; /* from T14's nearer end to the nearest gap or end of data */
+    double v_shape;        /* 0 flat-bottomed, 1 V: 2 x ingress_fraction */
+    double asymmetry;      /* (mean of second half - mean of first half) / depth */
 };
 
 /* Measure the dip in [starts_d, ends_d] of a light curve (time increasing; flux relative, trend

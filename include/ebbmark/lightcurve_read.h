@@ -9,12 +9,12 @@
 
 #include "ebbmark/lightcurve.h"
 
-#define LIGHTCURVE_FILE_BYTES_MAX (2ull << 30)    /* one light-curve file, unpacked */
-#define LIGHTCURVE_CSV_COLUMNS_MAX 1000           /* columns of a CSV */
-#define LIGHTCURVE_CSV_LINE_MAX (1u << 20)        /* bytes of one CSV line */
-#define LIGHTCURVE_STARS_PER_FILE_MAX 100000      /* stars in one CSV */
-#define LIGHTCURVE_ARCHIVE_FILES_MAX 2000000      /* entries of one archive */
-#define LIGHTCURVE_ARCHIVE_RATIO_MAX 200          /* unpacked over packed bytes, past 64 MiB */
+#define LIGHTCURVE_FILE_BYTES_MAX (2ull << 30) /* one light-curve file, unpacked */
+#define LIGHTCURVE_CSV_COLUMNS_MAX 1000        /* columns of a CSV */
+#define LIGHTCURVE_CSV_LINE_MAX (1u << 20)     /* bytes of one CSV line */
+#define LIGHTCURVE_STARS_PER_FILE_MAX 100000   /* stars in one CSV */
+#define LIGHTCURVE_ARCHIVE_FILES_MAX 2000000   /* entries of one archive */
+#define LIGHTCURVE_ARCHIVE_RATIO_MAX 200       /* unpacked over packed bytes, past 64 MiB */
 #define LIGHTCURVE_CATALOGUE_ROWS_MAX 5000000
 
 /* Which columns and header keywords to take; empty means the defaults of the design:
@@ -24,7 +24,8 @@
 struct lightcurve_mapping {
     char time[72], flux[72], error[72], quality[72], star[72]; /* column names */
     char key_name[12], key_ra[12], key_dec[12], key_magnitude[12], key_temperature[12],
-        key_radius[12]; /* FITS header keywords; defaults OBJECT RA_OBJ DEC_OBJ (none) TEFF RADIUS */
+        key_radius[12]; /* FITS header keywords; defaults OBJECT RA_OBJ DEC_OBJ (none) TEFF RADIUS
+                         */
 };
 
 /* What one file held. Owned by the struct; free with lightcurve_read_free. */
@@ -40,8 +41,8 @@ void lightcurve_reading_free(struct lightcurve_reading *reading);
  * Errors are BASE_INVALID ("no flux column", "truncated: …", "line 12: …"), BASE_TOO_LARGE or
  * BASE_MEMORY, never a crash. On failure `out` is zeroed. */
 bool lightcurve_read_bytes(const char *name, const void *data, size_t size,
-                           const struct lightcurve_mapping *mapping,
-                           struct lightcurve_reading *out, struct base_error *error);
+                           const struct lightcurve_mapping *mapping, struct lightcurve_reading *out,
+                           struct base_error *error);
 
 /* One file found by a walk: `label` is the path shown to people ("night1.zip: a/b.csv"). Data is
  * valid during the call only. `data` is NULL when the entry could not be read; `reason` then says
@@ -72,7 +73,7 @@ bool lightcurve_catalogue_read(const char *path, struct lightcurve_catalogue *ou
 void lightcurve_catalogue_free(struct lightcurve_catalogue *catalogue);
 
 /* The entry of that exact name, or NULL. */
-const struct lightcurve_star *lightcurve_catalogue_find(const struct lightcurve_catalogue *catalogue,
-                                                        const char *name);
+const struct lightcurve_star *
+lightcurve_catalogue_find(const struct lightcurve_catalogue *catalogue, const char *name);
 
 #endif

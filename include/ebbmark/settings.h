@@ -1,6 +1,6 @@
 /*
- * The campaign's settings: one table with name, type, default, range, unit and a sentence each. Help,
- * checks, the API and the Campaign page are made from it.
+ * The campaign's settings: one table with name, type, default, range, unit and a sentence each.
+ * Help, checks, the API and the Campaign page are made from it.
  *
  * EBBMARK_SETTING(name, kind, default, least, most, unit, sentence); kind is integer or real.
  */

@@ -24,22 +24,23 @@
 
 struct store;
 
-#define STORE_PUBLIC_ID_SIZE 17 /* 16 lower-case hex digits and a NUL: ids that people see and that
-                                   say nothing of order or kind */
+#define STORE_PUBLIC_ID_SIZE                                                                       \
+    17 /* 16 lower-case hex digits and a NUL: ids that people see and that                         \
+          say nothing of order or kind */
 #define STORE_HASH_SIZE 32
 
 /* ---- opening ---------------------------------------------------------------------------- */
 
 struct store_options {
-    unsigned readers;  /* reading connections, default 4 */
-    bool must_exist;   /* do not create */
+    unsigned readers;         /* reading connections, default 4 */
+    bool must_exist;          /* do not create */
     bool migrate_only_if_new; /* serve and load migrate at once; `migrate` reports */
 };
 
 /* Open or create the database: take the lock (FILE.lock, flock; held until close), check that it is
- * a database of ours, back it up (verified: integrity check and row counts; FILE.before-NNNN) before
- * each migration, migrate. BASE_CONFLICT: another process has it (the sentence says so, with its
- * process id). BASE_INVALID: it is not an Ebbmark database, or it is newer than this program.
+ * a database of ours, back it up (verified: integrity check and row counts; FILE.before-NNNN)
+ * before each migration, migrate. BASE_CONFLICT: another process has it (the sentence says so, with
+ * its process id). BASE_INVALID: it is not an Ebbmark database, or it is newer than this program.
  * BASE_NOT_FOUND with must_exist. The caller closes it. */
 bool store_open(const char *path, const struct store_options *options, struct store **out,
                 struct base_error *error);
@@ -57,8 +58,8 @@ bool store_secret(struct store *store, const char *name, unsigned char out[STORE
 struct store_setting {
     const char *name, *value;
 };
-bool store_settings_read(struct store *store, struct base_arena *arena,
-                         struct store_setting **out, size_t *count, struct base_error *error);
+bool store_settings_read(struct store *store, struct base_arena *arena, struct store_setting **out,
+                         size_t *count, struct base_error *error);
 bool store_setting_write(struct store *store, const char *name, const char *value, int64_t person,
                          struct base_error *error);
 
@@ -122,7 +123,11 @@ bool store_access_purge(struct store *store, int64_t now_ms, struct base_error *
 
 /* ---- batches, stars, light curves, segments ---------------------------------------------- */
 
-enum store_batch_state { STORE_BATCH_LOADING = 1, STORE_BATCH_READY = 2, STORE_BATCH_WITHDRAWN = 3 };
+enum store_batch_state {
+    STORE_BATCH_LOADING = 1,
+    STORE_BATCH_READY = 2,
+    STORE_BATCH_WITHDRAWN = 3
+};
 
 struct store_batch {
     int64_t id;
@@ -132,8 +137,8 @@ struct store_batch {
     int64_t files_loaded, files_repeated, files_refused, stars, segments, points;
 };
 
-/* Begin a batch, or resume the unfinished one of that name (*resumed). BASE_CONFLICT when a finished
- * batch has the name already. */
+/* Begin a batch, or resume the unfinished one of that name (*resumed). BASE_CONFLICT when a
+ * finished batch has the name already. */
 bool store_batch_begin(struct store *store, const char *name, const char *source, int64_t now_ms,
                        int64_t *id, bool *resumed, struct base_error *error);
 bool store_batch_finish(struct store *store, int64_t id, int64_t now_ms, struct base_error *error);
@@ -163,10 +168,10 @@ bool store_file_seen(struct store *store, const unsigned char sha256[STORE_HASH_
 /* Points of one light curve. Arrays of count values; error may be NULL. */
 struct store_points {
     size_t count;
-    const double *time;  /* d */
-    const float *flux;   /* relative flux minus 1 */
-    const float *trend;  /* relative trend minus 1 */
-    const float *error;  /* relative, or NULL */
+    const double *time; /* d */
+    const float *flux;  /* relative flux minus 1 */
+    const float *trend; /* relative trend minus 1 */
+    const float *error; /* relative, or NULL */
 };
 struct store_star_properties { /* NAN where unknown */
     const char *name;
@@ -271,27 +276,27 @@ struct store_mark {
 };
 
 enum store_review_outcome {
-    STORE_REVIEW_TAKEN = 1,    /* stored now */
-    STORE_REVIEW_REPEATED = 2, /* same person, key and body as one stored before: its id */
-    STORE_REVIEW_KEY_REUSED = 3,  /* the key was used for another body; nothing stored */
-    STORE_REVIEW_LEASE_USED = 4,  /* the lease has a review already; nothing stored */
-    STORE_REVIEW_CLOSED = 5    /* late, and the segment is no longer open; nothing stored */
+    STORE_REVIEW_TAKEN = 1,      /* stored now */
+    STORE_REVIEW_REPEATED = 2,   /* same person, key and body as one stored before: its id */
+    STORE_REVIEW_KEY_REUSED = 3, /* the key was used for another body; nothing stored */
+    STORE_REVIEW_LEASE_USED = 4, /* the lease has a review already; nothing stored */
+    STORE_REVIEW_CLOSED = 5      /* late, and the segment is no longer open; nothing stored */
 };
 struct store_review_new {
     int64_t person, segment;
-    const char *key;                       /* Idempotency-Key, 1 to 200 bytes */
+    const char *key;                          /* Idempotency-Key, 1 to 200 bytes */
     unsigned char body_hash[STORE_HASH_SIZE]; /* of what was sent */
-    unsigned char lease[16];               /* the lease's nonce */
-    bool late;                             /* the lease had expired: take only if still open */
+    unsigned char lease[16];                  /* the lease's nonce */
+    bool late;                                /* the lease had expired: take only if still open */
     int64_t submitted_ms;
-    double seconds;                        /* time spent looking, as the page measured it */
-    unsigned conditions;                   /* enum store_condition bits */
-    const struct store_mark *marks;        /* id and review are ignored */
+    double seconds;                 /* time spent looking, as the page measured it */
+    unsigned conditions;            /* enum store_condition bits */
+    const struct store_mark *marks; /* id and review are ignored */
     size_t mark_count;
     /* filled in: */
     enum store_review_outcome outcome;
-    int64_t review;  /* id, where TAKEN or REPEATED */
-    bool was_late;   /* of the stored review */
+    int64_t review; /* id, where TAKEN or REPEATED */
+    bool was_late;  /* of the stored review */
 };
 /* Take any number of reviews in one durable transaction, in order. Each gets its outcome; a false
  * return means that none of them was stored. */
@@ -362,17 +367,17 @@ bool store_person_record(struct store *store, struct base_arena *arena, int64_t 
 /* ---- consensus runs ---------------------------------------------------------------------- */
 
 struct store_run {
-    int64_t id;              /* the run's number, from 1 */
-    int64_t newest_review;   /* all reviews up to and including this one */
+    int64_t id;            /* the run's number, from 1 */
+    int64_t newest_review; /* all reviews up to and including this one */
     int64_t reviews, people, candidates;
     int64_t begun_ms, finished_ms;
-    const char *settings;    /* JSON object: everything needed to repeat it */
-    const char *fit;         /* JSON object: prior, log-likelihood, rounds, converged … */
+    const char *settings; /* JSON object: everything needed to repeat it */
+    const char *fit;      /* JSON object: prior, log-likelihood, rounds, converged … */
 };
 
 /* A candidate: a group with its probability and measures. NAN where not measured. */
 struct store_candidate {
-    int64_t id;   /* the id of the group's oldest mark: the same from run to run */
+    int64_t id; /* the id of the group's oldest mark: the same from run to run */
     int64_t run, star, light_curve;
     const char *star_name, *time_reference, *batch_name;
     double ra_deg, dec_deg;
@@ -382,7 +387,7 @@ struct store_candidate {
     int64_t looks, marks;
     double snr, depth_ppm, depth_error_ppm, duration_h, duration_error_h;
     double ingress_fraction, covered, gap_distance_d, asymmetry;
-    double spread_starts_d, spread_ends_d; /* robust scatter of the marks' edges */
+    double spread_starts_d, spread_ends_d;    /* robust scatter of the marks' edges */
     double period_d, period_error_d, epoch_d; /* NAN until linked */
     int64_t transits, other_stars;
     unsigned flags;      /* bits of the campaign room's table of flags */
@@ -417,17 +422,23 @@ bool store_runs_list(struct store *store, struct base_arena *arena, int64_t befo
                      struct store_run **out, size_t *count, struct base_error *error);
 
 enum store_candidate_order {
-    STORE_BY_PROBABILITY, STORE_BY_SNR, STORE_BY_DEPTH, STORE_BY_DURATION, STORE_BY_STAR,
-    STORE_BY_TIME, STORE_BY_LOOKS, STORE_BY_MARKS
+    STORE_BY_PROBABILITY,
+    STORE_BY_SNR,
+    STORE_BY_DEPTH,
+    STORE_BY_DURATION,
+    STORE_BY_STAR,
+    STORE_BY_TIME,
+    STORE_BY_LOOKS,
+    STORE_BY_MARKS
 };
 struct store_candidate_query {
-    int64_t run;              /* 0: the current one */
-    double min_probability;   /* 0: all */
+    int64_t run;                        /* 0: the current one */
+    double min_probability;             /* 0: all */
     const char *star, *batch, *verdict; /* "" : any; verdict "none": those without one */
     enum store_candidate_order order;
     bool ascending;
-    int64_t offset;           /* rows to pass over */
-    size_t limit;             /* 0: no limit */
+    int64_t offset; /* rows to pass over */
+    size_t limit;   /* 0: no limit */
 };
 /* Order is total: ties are broken by candidate id. The rows live as long as the arena. `total` (may
  * be NULL) is how many match in all. */
@@ -436,8 +447,7 @@ bool store_candidates_find(struct store *store, struct base_arena *arena,
                            size_t *count, int64_t *total, struct base_error *error);
 /* run 0: the current one. BASE_NOT_FOUND. */
 bool store_candidate_read(struct store *store, struct base_arena *arena, int64_t run,
-                          int64_t candidate, struct store_candidate *out,
-                          struct base_error *error);
+                          int64_t candidate, struct store_candidate *out, struct base_error *error);
 /* The marks of a candidate with their reviewers' skill weights. */
 struct store_candidate_mark {
     struct store_mark mark;

@@ -15,13 +15,13 @@
 double ephemeris_transit_flux(double z, double k, double u1, double u2);
 
 struct ephemeris_transit {
-    double period_d;       /* > 0 */
-    double mid_d;          /* a mid-transit time */
-    double radius_ratio;   /* k = Rp / R*, >= 0 */
-    double axis_ratio;     /* a / R*, > 1 */
-    double impact;         /* b, stellar radii, >= 0 */
-    double u1, u2;         /* limb darkening */
-    double exposure_d;     /* averaged over this, >= 0 */
+    double period_d;     /* > 0 */
+    double mid_d;        /* a mid-transit time */
+    double radius_ratio; /* k = Rp / R*, >= 0 */
+    double axis_ratio;   /* a / R*, > 1 */
+    double impact;       /* b, stellar radii, >= 0 */
+    double u1, u2;       /* limb darkening */
+    double exposure_d;   /* averaged over this, >= 0 */
 };
 
 /* Relative flux at n times (d), averaged over the exposure. */
