@@ -1,5 +1,5 @@
 /*
- * One table writer, several formats behind it (CSV, JSON; VOTable and FITS stand beside them).
+ * One table writer, several formats behind it: CSV, JSON and VOTable 1.4.
  * Streaming: a row is written as it comes, memory stays flat. Pure; one writer belongs to one
  * thread.
  */
@@ -39,7 +39,7 @@ struct export_table {
 };
 
 /* Facts about the whole table (run, time reference, caution …), written where the format has a
- * place: JSON "about", VOTable INFO, FITS header cards; CSV has none and stays a plain table. */
+ * place: JSON "about", VOTable INFO; CSV has none and stays a plain table. */
 struct export_fact {
     const char *name, *value;
 };
@@ -47,11 +47,11 @@ struct export_fact {
 /* Where bytes go; false stops the writer (with the sink's own error filled in). */
 typedef bool export_sink(void *context, const void *data, size_t size, struct base_error *error);
 
-enum export_format { EXPORT_CSV, EXPORT_JSON, EXPORT_VOTABLE, EXPORT_FITS };
+enum export_format { EXPORT_CSV, EXPORT_JSON, EXPORT_VOTABLE };
 
 struct export_writer;
 
-/* BASE_INVALID when the format is not built yet. Facts and table must outlive the writer. */
+/* BASE_MEMORY. Facts and table must outlive the writer; the caller closes it. */
 bool export_open(struct export_writer **out, enum export_format format,
                  const struct export_table *table, const struct export_fact *facts,
                  size_t fact_count, export_sink *sink, void *context, struct base_error *error);
@@ -62,7 +62,7 @@ bool export_row(struct export_writer *writer, const struct export_cell *cells,
 bool export_finish(struct export_writer *writer, struct base_error *error);
 void export_close(struct export_writer *writer);
 
-/* "csv", "json", "votable", "fits"; false for anything else. */
+/* "csv", "json" or "votable"; false for anything else. */
 bool export_format_read(const char *name, enum export_format *out);
 const char *
 export_media_type(enum export_format format); /* "text/csv; charset=utf-8; header=present" … */
