@@ -39,9 +39,9 @@ LIBS_consensus := -lgsl -lgslcblas
 LIBS_store := -lsqlite3 -lz
 LIBS_export :=
 LIBS_http := -lmicrohttpd -ljansson -lz
-LIBS_campaign := -ljansson -lunistring -lz
+LIBS_campaign := -ljansson -lunistring -lcurl -lgsl -lgslcblas -lz
 LIBS_api := -ljansson
-LIBS_cli := -lcurl -ljansson
+LIBS_cli := -ljansson
 
 LIBS_ALL := $(foreach r,$(ROOMS),$(LIBS_$(r)))
 
