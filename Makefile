@@ -115,8 +115,52 @@ $(B)/tests/reference/%: tests/reference/%.c $(foreach r,$(pure_rooms),$(call arc
 		-Wl,--start-group $(foreach r,$(pure_rooms),$(call archive,$(r))) -Wl,--end-group \
 		$(foreach r,$(pure_rooms),$(LIBS_$(r))) -lz -o $@
 
-format:
-	clang-format -i $$(git ls-files 'server/*.c' 'server/*.h' 'include/*.h' 'tests/*.c' 'tests/*.h')
+# ---- what is needed from Debian ----
+build_packages := gcc libc6-dev gzip libmicrohttpd-dev libsqlite3-dev libjansson-dev libcfitsio-dev \
+	libsodium-dev libgsl-dev libarchive-dev libcurl4-openssl-dev libunistring-dev zlib1g-dev
+demo_packages := curl:curl
+test_packages := libcmocka-dev python3 python3-numpy python3-scipy python3-astropy python3-jsonschema \
+	stilts node:nodejs npm:npm chromium curl:curl
+lint_packages := clang-format clang-tidy cppcheck
+
+.PHONY: deps-build deps-lint
+deps-build:
+	@server/install-packages.sh "build Ebbmark" $(build_packages)
+deps: deps-build
+	@server/install-packages.sh "run the demo" $(demo_packages)
+deps-test: deps
+	@server/install-packages.sh "test Ebbmark" $(test_packages)
+deps-lint:
+	@server/install-packages.sh "check the source" $(lint_packages)
+
+# ---- the two commands ----
+demo: deps
+	@$(MAKE) --no-print-directory -s -j2 build
+	@demo-data/demo.sh $(B)/ebbmark serve
+demo-once: deps
+	@$(MAKE) --no-print-directory -s -j2 build
+	@demo-data/demo.sh $(B)/ebbmark once
+
+test: deps-test
+	@echo "Building, twice: as it ships, and with the sanitizers."
+	@$(MAKE) --no-print-directory -s -j2 MODE=release build reference-programs
+	@$(MAKE) --no-print-directory -s -j2 MODE=sanitize build unit-programs
+	@/usr/bin/python3 tests/run.py --release $(OUT)/release --sanitize $(OUT)/sanitize $(SUITES)
+
+.PHONY: reference-programs bench-programs
+reference-programs: $(patsubst %.c,$(B)/%,$(wildcard tests/reference/*.c))
+bench-programs: $(patsubst %.c,$(B)/%,$(wildcard tests/bench/*.c))
+
+# ---- the source itself ----
+c_sources = $(shell git ls-files 'server/*.c' 'server/*.h' 'include/*.h' 'tests/*.c' 'tests/*.h')
+format: deps-lint
+	clang-format -i $(c_sources)
+lint: deps-build deps-lint $(B)/generated/web_files.c $(B)/generated/migrations.c
+	clang-format --dry-run --Werror $(c_sources)
+	cppcheck --quiet --std=c11 --language=c --enable=warning,performance,portability --inline-suppr \
+		--error-exitcode=1 -D_GNU_SOURCE -Iinclude server
+	clang-tidy --quiet --warnings-as-errors='*' $(shell git ls-files 'server/*.c') -- \
+		-std=c17 $(CPPFLAGS) -Wno-unknown-warning-option
 
 clean:
 	rm -rf $(OUT)
