@@ -156,6 +156,8 @@ void base_pool_for(struct base_pool *pool, size_t count, void (*block)(void *con
     (void)pthread_cond_init(&loop.done, NULL);
     (void)pthread_mutex_lock(&pool->lock);
     loop.next = pool->loops;
+    /* It is off the list again before this function returns. */
+    /* cppcheck-suppress autoVariables */
     pool->loops = &loop;
     (void)pthread_cond_broadcast(&pool->wake);
     while (loop.taken < loop.count)

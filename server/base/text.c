@@ -92,8 +92,7 @@ char *base_text_number(char *buffer, double value)
     locale_t before = plain == (locale_t)0 ? (locale_t)0 : uselocale(plain);
     for (int digits = 15; digits <= 17; digits++) {
         (void)snprintf(buffer, BASE_NUMBER_SIZE, "%.*g", digits, value);
-        double back = strtod(buffer, NULL);
-        if (memcmp(&back, &value, sizeof value) == 0)
+        if (!(strtod(buffer, NULL) < value) && !(strtod(buffer, NULL) > value))
             break;
     }
     if (plain != (locale_t)0) {

@@ -56,19 +56,20 @@ static void tell_refused(void *context, const char *label, const char *reason)
     (void)fprintf(stderr, "refused  %s: %s\n", label, reason);
 }
 
-static int load(const char *database, struct campaign_load_options *options)
+static int load(const char *database, const struct campaign_load_options *what)
 {
+    struct campaign_load_options options = *what;
     struct base_error error = {0};
     struct cli_campaign opened;
     struct load_view view = {.on_terminal = isatty(STDERR_FILENO) == 1};
     struct campaign_load_progress result = {0};
-    options->progress = show;
-    options->refused = tell_refused;
-    options->context = &view;
+    options.progress = show;
+    options.refused = tell_refused;
+    options.context = &view;
     if (!cli_campaign_open(&opened, database, false, &error))
         return cli_fail(&error);
     cli_signals_catch();
-    bool ok = campaign_load(opened.campaign, options, &result, &error);
+    bool ok = campaign_load(opened.campaign, &options, &result, &error);
     close_line(&view);
     cli_campaign_close(&opened);
     if (!ok) {
@@ -79,7 +80,7 @@ static int load(const char *database, struct campaign_load_options *options)
     }
     (void)printf("Batch %s: %" PRIu64 " files loaded, %" PRIu64 " loaded before, %" PRIu64
                  " refused; %" PRIu64 " stars, %" PRIu64 " points in %.1f s.\n",
-                 options->batch, result.files_loaded, result.files_repeated, result.files_refused,
+                 options.batch, result.files_loaded, result.files_repeated, result.files_refused,
                  result.stars, result.points, result.seconds);
     return result.files_refused > 0 ? CLI_PARTLY : CLI_DONE;
 }

@@ -22,7 +22,7 @@ int cli_usage(const char *command, bool help)
 static bool required_are_there(const struct cli_option *options)
 {
     for (const struct cli_option *at = options; at->name != NULL; at++)
-        if (at->required && *at->value == NULL) {
+        if (at->required && at->value != NULL && *at->value == NULL) {
             (void)fprintf(stderr, "ebbmark: --%s is missing.\n", at->name);
             return false;
         }
@@ -34,7 +34,7 @@ bool cli_options_read(int argc, char **argv, const struct cli_option *options, i
 {
     struct option longs[OPTIONS_MAX + 2] = {{0}};
     int count = 0;
-    for (; options[count].name != NULL && count < OPTIONS_MAX; count++)
+    for (; count < OPTIONS_MAX && options[count].name != NULL; count++)
         longs[count] = (struct option){
             options[count].name, options[count].value != NULL ? required_argument : no_argument,
             NULL, 256 + count};
