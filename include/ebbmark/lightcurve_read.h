@@ -12,7 +12,8 @@
 #define LIGHTCURVE_FILE_BYTES_MAX (2ull << 30) /* one light-curve file, unpacked */
 #define LIGHTCURVE_CSV_COLUMNS_MAX 1000        /* columns of a CSV */
 #define LIGHTCURVE_CSV_LINE_MAX (1u << 20)     /* bytes of one CSV line */
-#define LIGHTCURVE_STARS_PER_FILE_MAX 100000   /* stars in one CSV */
+#define LIGHTCURVE_STARS_PER_FILE_MAX 100000   /* stars in one file */
+#define LIGHTCURVE_FILE_POINTS_MAX 100000000   /* points in one file, over all its stars */
 #define LIGHTCURVE_ARCHIVE_FILES_MAX 2000000   /* entries of one archive */
 #define LIGHTCURVE_ARCHIVE_RATIO_MAX 200       /* unpacked over packed bytes, past 64 MiB */
 #define LIGHTCURVE_CATALOGUE_ROWS_MAX 5000000

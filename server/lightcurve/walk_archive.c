@@ -1,0 +1,208 @@
+#include "walk.h"
+
+#include <archive.h>
+#include <archive_entry.h>
+#include <stdlib.h>
+#include <string.h>
+
+#define READ_STEP (1u << 16)
+
+/* One archive under way. */
+struct opened {
+    struct archive *archive;
+    const char *label;
+    uint64_t packed;   /* bytes of the archive file */
+    uint64_t unpacked; /* bytes that its entries came to so far, those passed over included */
+    size_t entries;
+    unsigned char *data; /* of the current entry; kept from one to the next */
+    size_t length, capacity;
+};
+
+enum state { GO_ON, END_OF_ARCHIVE, STOP_WALK };
+
+/* Say that the archive itself, not one entry, is at fault, and give it up. */
+static enum state give_up(struct lightcurve_walker *walker, const struct opened *opened,
+                          const struct base_error *reason)
+{
+    return lightcurve_walker_tell(walker, opened->label, NULL, 0, reason) ? END_OF_ARCHIVE
+                                                                          : STOP_WALK;
+}
+
+static void word_damage(const struct opened *opened, struct base_error *reason)
+{
+    struct base_text said = {0};
+    const char *text = archive_error_string(opened->archive);
+    lightcurve_label_add(&said, text == NULL ? "no reason given" : text);
+    (void)base_fail(reason, BASE_INVALID, "The archive is truncated or damaged: %s.",
+                    said.data == NULL ? "no reason given" : said.data);
+    base_text_free(&said);
+}
+
+/* The entry's path as UTF-8 where libarchive has it so, else its bytes; NULL when unreadable. */
+static const char *entry_path(struct archive_entry *entry)
+{
+    const char *path = archive_entry_pathname_utf8(entry);
+    return path != NULL ? path : archive_entry_pathname(entry);
+}
+
+/* Absolute paths and those that climb out. Nothing is ever written to a path; such an entry is
+ * refused because whoever made it meant harm or made a mistake. */
+static bool path_is_unsafe(const char *path)
+{
+    if (path[0] == '/' || path[0] == '\\' || (path[0] != '\0' && path[1] == ':'))
+        return true;
+    for (const char *at = path; *at != '\0';) {
+        size_t length = strcspn(at, "/\\");
+        if (length == 2 && at[0] == '.' && at[1] == '.')
+            return true;
+        at += length;
+        at += *at == '\0' ? 0 : 1;
+    }
+    return false;
+}
+
+/* True when the file or a folder above it has a name that is passed over. */
+static bool path_is_passed_over(const char *path)
+{
+    for (const char *at = path; *at != '\0';) {
+        size_t length = strcspn(at, "/");
+        bool here = length == 1 && at[0] == '.';
+        bool last = at[length] == '\0';
+        if (!here && (last ? lightcurve_walk_passes_over(at) : at[0] == '.'))
+            return true;
+        at += length;
+        at += last ? 0 : 1;
+    }
+    return false;
+}
+
+static bool reserve(struct opened *opened, struct base_error *reason)
+{
+    if (opened->capacity - opened->length >= READ_STEP)
+        return true;
+    size_t capacity = opened->capacity == 0 ? 4 * READ_STEP : opened->capacity * 2;
+    unsigned char *data = realloc(opened->data, capacity);
+    if (data == NULL)
+        return base_fail(reason, BASE_MEMORY, "There is not enough memory to unpack this entry.");
+    opened->data = data;
+    opened->capacity = capacity;
+    return true;
+}
+
+/* Unpack the current entry into opened->data. On failure `reason` is filled, and *ends says that
+ * nothing more can be read from the archive. */
+static bool unpack_entry(struct opened *opened, bool *ends, struct base_error *reason)
+{
+    opened->length = 0;
+    for (;;) {
+        if (!reserve(opened, reason))
+            return false;
+        la_ssize_t got =
+            archive_read_data(opened->archive, opened->data + opened->length, READ_STEP);
+        if (got == 0)
+            return true;
+        if (got < 0) {
+            *ends = got == ARCHIVE_FATAL;
+            word_damage(opened, reason);
+            return false;
+        }
+        opened->length += (size_t)got;
+        opened->unpacked += (uint64_t)got;
+        if (opened->length > LIGHTCURVE_FILE_BYTES_MAX)
+            return base_fail(reason, BASE_TOO_LARGE,
+                             "Unpacked it is larger than %llu bytes, the limit for one file.",
+                             LIGHTCURVE_FILE_BYTES_MAX);
+        if (lightcurve_ratio_exceeded(opened->unpacked, opened->packed, reason)) {
+            *ends = true;
+            return false;
+        }
+    }
+}
+
+/* Tell the visitor of one regular file in the archive. */
+static enum state visit_entry(struct lightcurve_walker *walker, struct opened *opened,
+                              struct archive_entry *entry, const char *path, const char *label)
+{
+    struct base_error reason = {0};
+    bool ends = false, ok = false;
+    if (path == NULL) {
+        (void)base_fail(&reason, BASE_INVALID, "The name of entry %zu cannot be read.",
+                        opened->entries);
+    } else if (path_is_unsafe(path)) {
+        (void)base_fail(&reason, BASE_INVALID,
+                        "The entry's path is unsafe: it is absolute or leads out of the archive.");
+    } else if (archive_entry_is_encrypted(entry)) {
+        (void)base_fail(&reason, BASE_INVALID, "The entry is encrypted.");
+    } else if (walker->visit == NULL) {
+        uint64_t size = archive_entry_size(entry) < 0 ? 0 : (uint64_t)archive_entry_size(entry);
+        lightcurve_walker_count(walker, size);
+        opened->unpacked += size; /* passing over it unpacks it all the same */
+        return GO_ON;
+    } else if (unpack_entry(opened, &ends, &reason)) {
+        ok = !lightcurve_archive_is(opened->data, opened->length);
+        if (!ok)
+            (void)base_fail(&reason, BASE_INVALID, "An archive inside an archive is not unpacked.");
+    }
+    bool more = ok ? lightcurve_walker_tell(walker, label, opened->data, opened->length, NULL)
+                   : lightcurve_walker_tell(walker, label, NULL, 0, &reason);
+    return !more ? STOP_WALK : ends ? END_OF_ARCHIVE : GO_ON;
+}
+
+static enum state next_entry(struct lightcurve_walker *walker, struct opened *opened)
+{
+    struct archive_entry *entry = NULL;
+    struct base_error reason = {0};
+    int status = archive_read_next_header(opened->archive, &entry);
+    if (status == ARCHIVE_EOF)
+        return END_OF_ARCHIVE;
+    if (status == ARCHIVE_FATAL || status == ARCHIVE_RETRY) {
+        word_damage(opened, &reason);
+        return give_up(walker, opened, &reason);
+    }
+    if (++opened->entries > LIGHTCURVE_ARCHIVE_FILES_MAX) {
+        (void)base_fail(&reason, BASE_TOO_LARGE, "The archive has more than %d entries, the limit.",
+                        LIGHTCURVE_ARCHIVE_FILES_MAX);
+        return give_up(walker, opened, &reason);
+    }
+    if (lightcurve_ratio_exceeded(opened->unpacked, opened->packed, &reason))
+        return give_up(walker, opened, &reason);
+    if (archive_entry_filetype(entry) != AE_IFREG || archive_entry_hardlink(entry) != NULL)
+        return GO_ON;
+    const char *path = entry_path(entry);
+    if (path != NULL && !path_is_unsafe(path) && path_is_passed_over(path)) {
+        opened->unpacked += archive_entry_size(entry) < 0 ? 0 : (uint64_t)archive_entry_size(entry);
+        return GO_ON;
+    }
+    struct base_text label = {0};
+    base_text_add(&label, opened->label);
+    base_text_add(&label, ": ");
+    lightcurve_label_add(&label, path == NULL ? "?" : path);
+    enum state state =
+        visit_entry(walker, opened, entry, path, label.failed ? opened->label : label.data);
+    base_text_free(&label);
+    return state;
+}
+
+bool lightcurve_walk_archive(struct lightcurve_walker *walker, int fd, uint64_t size,
+                             const char *label)
+{
+    enum state state = GO_ON;
+    struct base_error reason = {0};
+    struct opened opened = {.archive = archive_read_new(), .label = label, .packed = size};
+    if (opened.archive == NULL) {
+        (void)base_fail(&reason, BASE_MEMORY, "There is not enough memory to open the archive.");
+        state = give_up(walker, &opened, &reason);
+    } else if (archive_read_support_filter_gzip(opened.archive) != ARCHIVE_OK ||
+               archive_read_support_format_tar(opened.archive) != ARCHIVE_OK ||
+               archive_read_support_format_zip(opened.archive) != ARCHIVE_OK ||
+               archive_read_open_fd(opened.archive, fd, READ_STEP) != ARCHIVE_OK) {
+        word_damage(&opened, &reason);
+        state = give_up(walker, &opened, &reason);
+    }
+    while (state == GO_ON)
+        state = next_entry(walker, &opened);
+    if (opened.archive != NULL)
+        (void)archive_read_free(opened.archive);
+    free(opened.data);
+    return state != STOP_WALK;
+}
