@@ -302,6 +302,13 @@ static bool read_structure_card(struct header *header, struct base_error *error)
     return true;
 }
 
+static bool fail_header_cut(const struct lightcurve_fits_walk *walk, struct base_error *error)
+{
+    return base_fail(error, BASE_INVALID,
+                     "Truncated: the header of part %d of the FITS file does not end.",
+                     walk->part.number);
+}
+
 /* Read the cards up to END and say where the data begin. */
 static bool read_header(struct lightcurve_fits_walk *walk, struct header *header,
                         struct lightcurve_fits_facts *facts, size_t *data_at,
@@ -313,15 +320,13 @@ static bool read_header(struct lightcurve_fits_walk *walk, struct header *header
             return base_fail(error, BASE_TOO_LARGE, "A FITS header has more than %d cards.",
                              LIGHTCURVE_FITS_CARDS_MAX);
         if (walk->size - at < CARD)
-            return base_fail(error, BASE_INVALID,
-                             "Truncated: the header of part %d of the FITS file does not end.",
-                             walk->part.number);
+            return fail_header_cut(walk, error);
         read_card(header, walk->data + at);
         if (strcmp(header->name, "END") == 0 && header->value[0] == '\0') {
             size_t cards = at + CARD - walk->at;
             size_t blocks = (cards + LIGHTCURVE_FITS_BLOCK - 1) / LIGHTCURVE_FITS_BLOCK;
             *data_at = walk->at + blocks * LIGHTCURVE_FITS_BLOCK;
-            return true;
+            return *data_at <= walk->size || fail_header_cut(walk, error);
         }
         if (!read_structure_card(header, error))
             return false;
@@ -388,7 +393,7 @@ static bool check_table(const struct header *header, const struct lightcurve_fit
 static bool check_size(const struct lightcurve_fits_walk *walk, const struct header *header,
                        size_t data_at, uint64_t bytes, bool fits, struct base_error *error)
 {
-    uint64_t there = data_at > walk->size ? 0 : walk->size - data_at;
+    uint64_t there = walk->size - data_at;
     if (fits && bytes <= there)
         return true;
     if (walk->part.is_table)
@@ -433,8 +438,9 @@ bool lightcurve_fits_next(struct lightcurve_fits_walk *walk, bool *found, struct
     *found = false;
     bool first = part->number == 0;
     /* What follows the last unit without beginning as one is no part of the data. */
-    if (!first && (walk->at >= walk->size || walk->size - walk->at < CARD ||
-                   memcmp(walk->data + walk->at, "XTENSION", 8) != 0))
+    size_t left = walk->at < walk->size ? walk->size - walk->at : 0;
+    if (!first &&
+        (left == 0 || memcmp(walk->data + walk->at, "XTENSION", left < 8 ? left : 8) != 0))
         return true;
     if (part->number == LIGHTCURVE_FITS_PARTS_MAX)
         return base_fail(error, BASE_TOO_LARGE, "The FITS file has more than %d parts.",

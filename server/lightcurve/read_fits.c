@@ -220,23 +220,26 @@ no_memory:
     return base_fail(error, BASE_MEMORY, "There is not enough memory to read the FITS table.");
 }
 
-/* `rows` numbers of one column as doubles; nulls of integer columns become NAN. Unscaled floating
- * point is copied as it stands, without cfitsio's own search for nulls, which NAN already are. */
+/* `rows` numbers of one column as doubles; nulls of integer columns become NAN. Floating point is
+ * not searched for nulls, which NAN already are. cfitsio writes through its anynul argument
+ * whenever it meets a null, so none of these calls may leave it NULL. */
 static void read_doubles(const struct table *table, int index, size_t first, size_t rows,
                          double *out, int *status)
 {
     double missing = NAN;
+    int any = 0;
     char type = table->part->columns[index].type;
     bool plain = type == 'E' || type == 'D';
     fits_read_col(table->file, TDOUBLE, index + 1, (LONGLONG)first + 1, 1, (LONGLONG)rows,
-                  plain ? NULL : &missing, out, NULL, status);
+                  plain ? NULL : &missing, out, &any, status);
 }
 
 static void read_quality(const struct table *table, size_t first, size_t rows, int32_t *out,
                          int *status)
 {
+    int any = 0;
     fits_read_col(table->file, table->quality_type, table->columns.quality + 1, (LONGLONG)first + 1,
-                  1, (LONGLONG)rows, NULL, table->flags, NULL, status);
+                  1, (LONGLONG)rows, NULL, table->flags, &any, status);
     for (size_t i = 0; i < rows && *status == 0; i++) {
         double number;
         memcpy(&number, &table->flags[i], sizeof number);
@@ -275,10 +278,10 @@ static bool split_by_star(const struct table *table, const struct lightcurve_raw
 {
     size_t index = 0;
     for (size_t first = 0; first < all->count; first += table->block) {
-        int status = 0;
+        int status = 0, any = 0;
         size_t count = all->count - first < table->block ? all->count - first : table->block;
         fits_read_col(table->file, TSTRING, table->columns.star + 1, (LONGLONG)first + 1, 1,
-                      (LONGLONG)count, NULL, table->name_of, NULL, &status);
+                      (LONGLONG)count, NULL, table->name_of, &any, &status);
         if (status != 0)
             return fail_fits(status, "read the star column", error);
         for (size_t i = 0; i < count; i++) {
