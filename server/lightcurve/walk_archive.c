@@ -2,23 +2,28 @@
 
 #include <archive.h>
 #include <archive_entry.h>
+#include <errno.h>
 #include <stdlib.h>
 #include <string.h>
+#include <unistd.h>
 
 #define READ_STEP (1u << 16)
+#define DAMAGED_MAX 100 /* damaged entries of a zip after which the rest is given up */
 
 /* One archive under way. */
 struct opened {
     struct archive *archive;
+    int fd;
     const char *label;
     uint64_t packed;   /* bytes of the archive file */
     uint64_t unpacked; /* bytes that its entries came to so far, those passed over included */
-    size_t entries;
+    size_t entries, damaged;
     unsigned char *data; /* of the current entry; kept from one to the next */
     size_t length, capacity;
 };
 
-enum state { GO_ON, END_OF_ARCHIVE, STOP_WALK };
+/* REOPEN: libarchive is of no more use, but the entries that follow can still be found. */
+enum state { GO_ON, REOPEN, END_OF_ARCHIVE, STOP_WALK };
 
 /* Say that the archive itself, not one entry, is at fault, and give it up. */
 static enum state give_up(struct lightcurve_walker *walker, const struct opened *opened,
@@ -89,9 +94,17 @@ static bool reserve(struct opened *opened, struct base_error *reason)
     return true;
 }
 
-/* Unpack the current entry into opened->data. On failure `reason` is filled, and *ends says that
- * nothing more can be read from the archive. */
-static bool unpack_entry(struct opened *opened, bool *ends, struct base_error *reason)
+/* How to go on after libarchive gave up within an entry: a zip's directory leads to the next one,
+ * a tar's stream does not. */
+static enum state after_damage(struct opened *opened)
+{
+    bool zip = archive_format(opened->archive) == ARCHIVE_FORMAT_ZIP;
+    return zip && ++opened->damaged <= DAMAGED_MAX ? REOPEN : END_OF_ARCHIVE;
+}
+
+/* Unpack the current entry into opened->data. On failure `reason` is filled, and *next says how the
+ * walk can go on. */
+static bool unpack_entry(struct opened *opened, enum state *next, struct base_error *reason)
 {
     opened->length = 0;
     for (;;) {
@@ -102,8 +115,9 @@ static bool unpack_entry(struct opened *opened, bool *ends, struct base_error *r
         if (got == 0)
             return true;
         if (got < 0) {
-            *ends = got == ARCHIVE_FATAL;
             word_damage(opened, reason);
+            if (got == ARCHIVE_FATAL)
+                *next = after_damage(opened);
             return false;
         }
         opened->length += (size_t)got;
@@ -113,7 +127,7 @@ static bool unpack_entry(struct opened *opened, bool *ends, struct base_error *r
                              "Unpacked it is larger than %llu bytes, the limit for one file.",
                              LIGHTCURVE_FILE_BYTES_MAX);
         if (lightcurve_ratio_exceeded(opened->unpacked, opened->packed, reason)) {
-            *ends = true;
+            *next = END_OF_ARCHIVE;
             return false;
         }
     }
@@ -124,7 +138,8 @@ static enum state visit_entry(struct lightcurve_walker *walker, struct opened *o
                               struct archive_entry *entry, const char *path, const char *label)
 {
     struct base_error reason = {0};
-    bool ends = false, ok = false;
+    enum state next = GO_ON;
+    bool ok = false;
     if (path == NULL) {
         (void)base_fail(&reason, BASE_INVALID, "The name of entry %zu cannot be read.",
                         opened->entries);
@@ -138,14 +153,14 @@ static enum state visit_entry(struct lightcurve_walker *walker, struct opened *o
         lightcurve_walker_count(walker, size);
         opened->unpacked += size; /* passing over it unpacks it all the same */
         return GO_ON;
-    } else if (unpack_entry(opened, &ends, &reason)) {
+    } else if (unpack_entry(opened, &next, &reason)) {
         ok = !lightcurve_archive_is(opened->data, opened->length);
         if (!ok)
             (void)base_fail(&reason, BASE_INVALID, "An archive inside an archive is not unpacked.");
     }
     bool more = ok ? lightcurve_walker_tell(walker, label, opened->data, opened->length, NULL)
                    : lightcurve_walker_tell(walker, label, NULL, 0, &reason);
-    return !more ? STOP_WALK : ends ? END_OF_ARCHIVE : GO_ON;
+    return more ? next : STOP_WALK;
 }
 
 static enum state next_entry(struct lightcurve_walker *walker, struct opened *opened)
@@ -183,24 +198,51 @@ static enum state next_entry(struct lightcurve_walker *walker, struct opened *op
     return state;
 }
 
+/* Open the archive from its start, in place of what was open. */
+static bool open_archive(struct opened *opened, struct base_error *reason)
+{
+    if (opened->archive != NULL)
+        (void)archive_read_free(opened->archive);
+    opened->archive = archive_read_new();
+    if (opened->archive == NULL)
+        return base_fail(reason, BASE_MEMORY, "There is not enough memory to open the archive.");
+    if (lseek(opened->fd, 0, SEEK_SET) != 0)
+        return base_fail_errno(reason, errno, "Reading %s", opened->label);
+    if (archive_read_support_filter_gzip(opened->archive) != ARCHIVE_OK ||
+        archive_read_support_format_tar(opened->archive) != ARCHIVE_OK ||
+        archive_read_support_format_zip(opened->archive) != ARCHIVE_OK ||
+        archive_read_open_fd(opened->archive, opened->fd, READ_STEP) != ARCHIVE_OK) {
+        word_damage(opened, reason);
+        return false;
+    }
+    return true;
+}
+
+/* Open again and pass over the entries that were seen already. */
+static enum state reopen(struct lightcurve_walker *walker, struct opened *opened)
+{
+    struct base_error reason = {0};
+    if (!open_archive(opened, &reason))
+        return give_up(walker, opened, &reason);
+    for (size_t i = 0; i < opened->entries; i++) {
+        struct archive_entry *entry = NULL;
+        int status = archive_read_next_header(opened->archive, &entry);
+        if (status != ARCHIVE_OK && status != ARCHIVE_WARN) {
+            word_damage(opened, &reason);
+            return give_up(walker, opened, &reason);
+        }
+    }
+    return GO_ON;
+}
+
 bool lightcurve_walk_archive(struct lightcurve_walker *walker, int fd, uint64_t size,
                              const char *label)
 {
-    enum state state = GO_ON;
     struct base_error reason = {0};
-    struct opened opened = {.archive = archive_read_new(), .label = label, .packed = size};
-    if (opened.archive == NULL) {
-        (void)base_fail(&reason, BASE_MEMORY, "There is not enough memory to open the archive.");
-        state = give_up(walker, &opened, &reason);
-    } else if (archive_read_support_filter_gzip(opened.archive) != ARCHIVE_OK ||
-               archive_read_support_format_tar(opened.archive) != ARCHIVE_OK ||
-               archive_read_support_format_zip(opened.archive) != ARCHIVE_OK ||
-               archive_read_open_fd(opened.archive, fd, READ_STEP) != ARCHIVE_OK) {
-        word_damage(&opened, &reason);
-        state = give_up(walker, &opened, &reason);
-    }
-    while (state == GO_ON)
-        state = next_entry(walker, &opened);
+    struct opened opened = {.fd = fd, .label = label, .packed = size};
+    enum state state = open_archive(&opened, &reason) ? GO_ON : give_up(walker, &opened, &reason);
+    while (state == GO_ON || state == REOPEN)
+        state = state == GO_ON ? next_entry(walker, &opened) : reopen(walker, &opened);
     if (opened.archive != NULL)
         (void)archive_read_free(opened.archive);
     free(opened.data);
