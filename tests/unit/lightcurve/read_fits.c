@@ -6,6 +6,7 @@
 #include <cmocka.h>
 
 #include <math.h>
+#include <pthread.h>
 
 #include "lightcurve/read_support.h"
 
@@ -602,6 +603,63 @@ static void a_compressed_file_is_read_but_not_one_compressed_twice(void **state)
     base_text_free(&twice);
 }
 
+static void more_points_than_the_limit_are_refused(void **state)
+{
+    (void)state;
+    struct base_text file = {0};
+    struct lightcurve_reading reading;
+    struct base_error error;
+    char rows[16];
+    (void)snprintf(rows, sizeof rows, "%d", LIGHTCURVE_POINTS_MAX + 1);
+    primary(&file, NULL);
+    table_header(&file, "2", rows, "2",
+                 "TTYPE1  = 'TIME'\nTFORM1  = 'B'\nTTYPE2  = 'FLUX'\nTFORM2  = 'B'");
+    for (int i = 0; i <= LIGHTCURVE_POINTS_MAX; i++)
+        whole(&file, 2, i);
+    pad(&file, '\0');
+    assert_fails(read_text(&file, &reading, &error), error, BASE_TOO_LARGE,
+                 "The table has 5000001 rows; the limit is 5000000");
+    base_text_free(&file);
+}
+
+struct reader {
+    const struct base_text *file;
+    int wrong;
+};
+
+static void *read_many_times(void *context)
+{
+    struct reader *reader = context;
+    for (int i = 0; i < 200; i++) {
+        struct lightcurve_reading reading;
+        struct base_error error = {0};
+        if (!read_mapped(reader->file, &defaults, &reading, &error) ||
+            reading.curves[0].count != 3 || reading.curves[0].time[2] != 101.0 ||
+            reading.curves[0].quality[2] != 128)
+            reader->wrong++;
+        lightcurve_reading_free(&reading);
+    }
+    return NULL;
+}
+
+static void several_threads_read_at_once(void **state)
+{
+    (void)state;
+    struct base_text file = {0};
+    pthread_t threads[4];
+    struct reader readers[4] = {0};
+    small_file(&file, NULL, "");
+    for (int i = 0; i < 4; i++) {
+        readers[i].file = &file;
+        assert_int_equal(pthread_create(&threads[i], NULL, read_many_times, &readers[i]), 0);
+    }
+    for (int i = 0; i < 4; i++) {
+        assert_int_equal(pthread_join(threads[i], NULL), 0);
+        assert_int_equal(readers[i].wrong, 0);
+    }
+    base_text_free(&file);
+}
+
 int main(void)
 {
     const struct CMUnitTest tests[] = {
@@ -627,6 +685,8 @@ int main(void)
         cmocka_unit_test(a_star_name_that_is_too_long_or_not_text_is_refused),
         cmocka_unit_test(a_header_without_an_end_is_refused),
         cmocka_unit_test(a_compressed_file_is_read_but_not_one_compressed_twice),
+        cmocka_unit_test(more_points_than_the_limit_are_refused),
+        cmocka_unit_test(several_threads_read_at_once),
     };
     return cmocka_run_group_tests(tests, NULL, NULL);
 }
