@@ -35,7 +35,8 @@ static struct overlap overlap_at(double z, double k)
     at.under_d = (1.0 - k) + z;
     at.inside = at.over_s <= 0.0;
     if (!at.inside) {
-        at.area_term = sqrt(at.under_d * (1.0 + at.d)) * sqrt(at.over_s * (1.0 + at.s));
+        double under = fmax(1.0 + at.d, 0.0); /* rounding can take it below at first contact */
+        at.area_term = sqrt(at.under_d * under) * sqrt(at.over_s * (1.0 + at.s));
         at.behind = atan2(at.area_term, k * k + z * z - 1.0);
         at.on_limb = atan2(at.area_term, 1.0 - k * k + z * z);
     }
