@@ -73,7 +73,7 @@ $(B)/generated/migrations.c: $(sort $(wildcard migrations/*.sql)) server/store/e
 	@mkdir -p $(@D)
 	server/store/embed-migrations.sh migrations > $@.part && mv $@.part $@
 $(B)/generated/%.o: $(B)/generated/%.c
-	$(CC) $(CPPFLAGS) $(CFLAGS_ALL) -c $< -o $@
+	$(CC) $(CPPFLAGS) -I. $(CFLAGS_ALL) -c $< -o $@
 $(call archive,store): $(B)/generated/migrations.o
 $(call archive,api): $(B)/generated/web_files.o
 

@@ -1,0 +1,109 @@
+/*
+ * Inside the store: connections, statements, and the two ways to use them (read, write).
+ *
+ * A connection belongs to one thread at a time. Statements are prepared once a connection and found
+ * again by the address of their constant SQL text.
+ */
+#ifndef STORE_DB_H
+#define STORE_DB_H
+
+#include <pthread.h>
+#include <sqlite3.h>
+
+#include "ebbmark/store.h"
+
+#define DB_STATEMENTS_MAX                                                                          \
+    256u /* slots of the cache, a power of two, well above the statements used */
+
+struct db {
+    sqlite3 *handle;
+    struct db_slot {
+        const char *sql;
+        sqlite3_stmt *statement;
+    } slots[DB_STATEMENTS_MAX];
+};
+
+struct store {
+    char *path;
+    int lock_fd;
+    int version;
+    struct db writer;
+    pthread_mutex_t writing; /* held by whoever uses writer */
+    pthread_mutex_t lock;    /* guards the fields below */
+    pthread_cond_t returned;
+    struct db *readers;
+    struct db **idle; /* idle_count of them */
+    size_t reader_count, idle_count;
+};
+
+/* Open one connection with the settings all connections share. */
+bool db_open(struct db *db, const char *path, bool read_only, struct base_error *error);
+void db_close(struct db *db);
+
+/* Fill error with what went wrong on this connection last; returns false. `doing` begins a
+ * sentence. */
+bool db_fail(struct db *db, const char *doing, struct base_error *error);
+
+/* Run SQL that gives no rows and takes no values, such as a whole migration. */
+bool db_script(struct db *db, const char *sql, struct base_error *error);
+
+/* Bind values to the cached statement of this constant SQL. `kinds` has one letter a value: i
+ * int64_t, r double (NAN becomes NULL), t text (NULL becomes NULL), b blob and its size_t size.
+ * NULL on failure. Texts and blobs must live until db_done. */
+sqlite3_stmt *db_bind(struct db *db, const char *sql, struct base_error *error, const char *kinds,
+                      ...);
+
+/* The next row: 1; no more: 0; failure: -1 with the error filled. */
+int db_next(struct db *db, sqlite3_stmt *statement, struct base_error *error);
+
+/* Give a bound statement back to the cache. NULL is allowed. */
+void db_done(sqlite3_stmt *statement);
+
+/* Bind, step to the end, give back. */
+#define db_run(db, error, sql, ...)                                                                \
+    db_finish((db), db_bind((db), (sql), (error), __VA_ARGS__), (error))
+bool db_finish(struct db *db, sqlite3_stmt *statement, struct base_error *error);
+
+/* A reading connection; waits for one when all are busy. Give it back. */
+struct db *db_read(struct store *store);
+void db_read_end(struct store *store, struct db *db);
+
+/* The writing connection inside a transaction, to this thread alone; NULL on failure. db_write_end
+ * commits when ok (and returns whether that worked) or takes everything back. Both must be paired.
+ */
+struct db *db_write(struct store *store, struct base_error *error);
+bool db_write_end(struct store *store, bool ok, struct base_error *error);
+
+/* Values of the current row. */
+double db_real(sqlite3_stmt *row, int column);                                /* NAN for NULL */
+const char *db_text(sqlite3_stmt *row, int column, struct base_arena *arena); /* NULL: no memory */
+
+/* A list of unknown length, grown in an arena: returns room for one more item of `size` bytes and
+ * moves the items when the array must grow. NULL: no memory (error filled). */
+struct db_list {
+    void *items;
+    size_t count, capacity;
+};
+void *db_list_add(struct db_list *list, struct base_arena *arena, size_t size,
+                  struct base_error *error);
+
+/* Read all rows of a question into an array in the arena: fill(row, arena, item) takes one row,
+ * false meaning no memory. `*items` is the array (NULL when there are none). */
+bool db_rows(struct store *store, struct base_arena *arena, size_t size,
+             bool (*fill)(sqlite3_stmt *row, struct base_arena *arena, void *item), void *items,
+             size_t *count, struct base_error *error, const char *sql, const char *kinds, ...);
+
+/* Read the one row of a question into *item. BASE_NOT_FOUND with the sentence when there is none.
+ */
+bool db_row(struct store *store, struct base_arena *arena,
+            bool (*fill)(sqlite3_stmt *row, struct base_arena *arena, void *item), void *item,
+            const char *missing, struct base_error *error, const char *sql, const char *kinds, ...);
+
+/* Run one change in a transaction of its own. */
+bool db_change(struct store *store, struct base_error *error, const char *sql, const char *kinds,
+               ...);
+
+/* "No memory to <doing>." */
+bool db_no_memory(struct base_error *error);
+
+#endif

@@ -1,0 +1,112 @@
+#include "points.h"
+
+#include <stdlib.h>
+#include <string.h>
+#include <zlib.h>
+
+#include "db.h"
+
+#define POINTS_MAX 100000000u
+
+/* Bytes of n points: time 8, flux 4, trend 4, and error 4 where there is one. */
+static size_t plain_size(size_t n, bool has_error)
+{
+    return n * (has_error ? 20 : 16);
+}
+
+/* Byte k of every item together: out[k * n + i] = in[i * width + k]; and the reverse. */
+static void shuffle(unsigned char *out, const unsigned char *in, size_t n, size_t width)
+{
+    for (size_t k = 0; k < width; k++)
+        for (size_t i = 0; i < n; i++)
+            out[k * n + i] = in[i * width + k];
+}
+
+static void unshuffle(unsigned char *out, const unsigned char *in, size_t n, size_t width)
+{
+    for (size_t k = 0; k < width; k++)
+        for (size_t i = 0; i < n; i++)
+            out[i * width + k] = in[k * n + i];
+}
+
+bool points_pack(const struct store_points *points, struct points_blob *out,
+                 struct base_error *error)
+{
+    size_t n = points->count, size = plain_size(n, points->error != NULL);
+    uLong bound = compressBound((uLong)size);
+    unsigned char *plain = malloc(size > 0 ? size : 1);
+    *out = (struct points_blob){.data = malloc(bound)};
+    bool ok = plain != NULL && out->data != NULL;
+    if (ok) {
+        shuffle(plain, (const unsigned char *)points->time, n, 8);
+        shuffle(plain + 8 * n, (const unsigned char *)points->flux, n, 4);
+        shuffle(plain + 12 * n, (const unsigned char *)points->trend, n, 4);
+        if (points->error != NULL)
+            shuffle(plain + 16 * n, (const unsigned char *)points->error, n, 4);
+        out->checksum = (uint32_t)crc32_z(0, plain, size);
+        ok = compress2(out->data, &bound, plain, (uLong)size, 4) == Z_OK;
+        out->size = bound;
+    }
+    free(plain);
+    if (!ok) {
+        free(out->data);
+        *out = (struct points_blob){0};
+        return db_no_memory(error);
+    }
+    return true;
+}
+
+bool points_unpack(const unsigned char *data, size_t size, uint32_t checksum, size_t count,
+                   bool has_error, struct base_arena *arena, struct store_points *out,
+                   struct base_error *error)
+{
+    if (count == 0 || count > POINTS_MAX)
+        return base_fail(error, BASE_CORRUPT, "A stored light curve states an impossible length.");
+    size_t need = plain_size(count, has_error);
+    uLong got = (uLong)need;
+    unsigned char *plain = malloc(need);
+    double *time = base_arena_take_array(arena, count, sizeof *time);
+    float *columns = base_arena_take_array(arena, count, (has_error ? 3 : 2) * sizeof *columns);
+    if (plain == NULL || time == NULL || columns == NULL) {
+        free(plain);
+        return db_no_memory(error);
+    }
+    bool ok = uncompress(plain, &got, data, (uLong)size) == Z_OK && got == need &&
+              (uint32_t)crc32_z(0, plain, need) == checksum;
+    if (ok) {
+        unshuffle((unsigned char *)time, plain, count, 8);
+        for (size_t column = 0; column < (has_error ? 3u : 2u); column++)
+            unshuffle((unsigned char *)(columns + column * count), plain + (8 + 4 * column) * count,
+                      count, 4);
+        *out = (struct store_points){.count = count,
+                                     .time = time,
+                                     .flux = columns,
+                                     .trend = columns + count,
+                                     .error = has_error ? columns + 2 * count : NULL};
+    } else {
+        (void)base_fail(error, BASE_CORRUPT,
+                        "A stored light curve is damaged; restore the database from a backup.");
+    }
+    free(plain);
+    return ok;
+}
+
+bool store_points_read(struct store *store, struct base_arena *arena, int64_t light_curve,
+                       struct store_points *out, struct base_error *error)
+{
+    static const char sql[] = "SELECT l.count, p.has_error, p.checksum, p.packed FROM points p"
+                              " JOIN light_curve l ON l.id = p.light_curve WHERE p.light_curve = ?";
+    struct db *db = db_read(store);
+    sqlite3_stmt *row = db_bind(db, sql, error, "i", light_curve);
+    int got = row != NULL ? db_next(db, row, error) : -1;
+    bool ok =
+        got == 1 &&
+        points_unpack(sqlite3_column_blob(row, 3), (size_t)sqlite3_column_bytes(row, 3),
+                      (uint32_t)sqlite3_column_int64(row, 2), (size_t)sqlite3_column_int64(row, 0),
+                      sqlite3_column_int(row, 1) != 0, arena, out, error);
+    if (got == 0)
+        (void)base_fail(error, BASE_NOT_FOUND, "There is no such light curve.");
+    db_done(row);
+    db_read_end(store, db);
+    return ok;
+}
