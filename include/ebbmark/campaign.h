@@ -2,7 +2,8 @@
  * The campaign: the work itself. It calls the pure rooms with arrays and the store with verbs.
  *
  * Threads: a campaign may be used from any thread. What it keeps in memory (the queue of open
- * segments, cached flux, settings) is guarded inside.
+ * segments, leases, who has seen what, settings) is guarded inside. It has two threads of its own:
+ * the writer of reviews and the runner of consensus runs.
  */
 #ifndef EBBMARK_CAMPAIGN_H
 #define EBBMARK_CAMPAIGN_H
@@ -16,9 +17,11 @@
 struct campaign;
 
 /* Take over an open store (still the caller's to close, after campaign_close). `pool` carries the
- * parallel work and may be NULL. */
+ * parallel work and may be NULL; it is the caller's to close, after campaign_close. */
 bool campaign_open(struct store *store, struct base_pool *pool, const struct base_log *log,
                    struct campaign **out, struct base_error *error);
+/* Store what waits to be stored, stop a background run at its next step, join the threads, free.
+ * Nobody else may be using the campaign any more. NULL is allowed. */
 void campaign_close(struct campaign *campaign);
 struct store *campaign_store(struct campaign *campaign);
 
@@ -31,34 +34,52 @@ struct campaign_settings campaign_settings_now(struct campaign *campaign);
 bool campaign_setting_change(struct campaign *campaign, const char *name, const char *value,
                              int64_t person, struct base_error *error);
 
+/* What goes on inside, for /metrics: numbers now, and totals since campaign_open. */
+struct campaign_figures {
+    uint64_t segments_queued; /* open segments that may be handed out */
+    uint64_t leases_live;
+    uint64_t people_remembered; /* whose looks are kept in memory */
+    uint64_t reviews_waiting;   /* for the writer */
+    uint64_t leases_given, reviews_taken, reviews_failed, review_groups;
+    uint64_t runs_done, runs_failed;
+};
+struct campaign_figures campaign_figures_now(struct campaign *campaign);
+
 /* ---- people ------------------------------------------------------------------------------ */
 
 #define CAMPAIGN_HANDLE_CHARACTERS_MAX 32
 #define CAMPAIGN_PASSPHRASE_BYTES_MIN 10
 #define CAMPAIGN_PASSPHRASE_BYTES_MAX 512
-#define CAMPAIGN_SECRET_SIZE 44 /* base64 text of 32 random bytes, with NUL */
+#define CAMPAIGN_SECRET_SIZE 44   /* base64 text of 32 random bytes, with NUL */
+#define CAMPAIGN_HASHES_AT_ONCE 2 /* passphrases hashed at the same time, 64 MiB each */
+#define CAMPAIGN_HASHES_WAITING_MAX                                                                \
+    32 /* more than this waiting for their turn: BASE_BUSY from every call marked slow */
 
-/* Check a handle and make its key (NFKC, case folded, in `key`, 256 bytes). BASE_INVALID: empty,
- * over CAMPAIGN_HANDLE_CHARACTERS_MAX, controls, or blanks at the ends. */
+/* Check a handle and make its key (NFKC, case folded, in `key`, 256 bytes), so that two handles
+ * that read alike are one. BASE_INVALID: empty, over CAMPAIGN_HANDLE_CHARACTERS_MAX, controls or
+ * invisible characters, or blanks at the ends. */
 bool campaign_handle_key(const char *handle, char key[256], struct base_error *error);
-/* Join. passphrase NULL makes a guest. handle NULL gives a guest an invented one. BASE_CONFLICT
- * when the handle is taken, BASE_DENIED when the campaign is not open. Slow: argon2id. */
+/* Join. passphrase NULL makes a guest. handle NULL gives a guest an invented one (with a passphrase
+ * it is BASE_INVALID). BASE_CONFLICT when the handle is taken, BASE_DENIED when the campaign is not
+ * open. Slow: argon2id. */
 bool campaign_join(struct campaign *campaign, const char *handle, const char *passphrase,
                    struct base_arena *arena, struct store_person *out, struct base_error *error);
 /* Add a person of any role, by an admin's hand; passphrase may be NULL. */
 bool campaign_person_add(struct campaign *campaign, const char *handle, const char *passphrase,
                          enum store_role role, int64_t *id, struct base_error *error);
 /* BASE_DENIED with one and the same sentence for an unknown handle and a wrong passphrase, in the
- * same time. Slow. */
+ * same time. A suspended person with the right passphrase is told so. Slow. */
 bool campaign_sign_in(struct campaign *campaign, const char *handle, const char *passphrase,
                       struct base_arena *arena, struct store_person *out, struct base_error *error);
 /* Choose a (new) passphrase. Slow. */
 bool campaign_passphrase_set(struct campaign *campaign, int64_t person, const char *passphrase,
                              struct base_error *error);
-/* A new session or token for a person; the secret is told once and kept as a hash only. */
+/* A new session or token for a person, for `days` from now; the secret is told once and kept as a
+ * hash only. */
 bool campaign_access_give(struct campaign *campaign, enum store_access kind, int64_t person,
                           enum store_role role, double days, char secret[CAMPAIGN_SECRET_SIZE],
                           struct base_error *error);
+/* BASE_NOT_FOUND when there is none or it has ended. A suspended person is found, and marked so. */
 bool campaign_access_check(struct campaign *campaign, enum store_access kind, const char *secret,
                            struct store_access_found *out, struct base_error *error);
 bool campaign_access_end(struct campaign *campaign, enum store_access kind, const char *secret,
@@ -69,6 +90,7 @@ bool campaign_access_end(struct campaign *campaign, enum store_access kind, cons
 struct campaign_load_progress {
     uint64_t files_total, files_done, files_loaded, files_repeated, files_refused;
     uint64_t stars, points, bytes_total, bytes_done;
+    uint64_t stars_left_out; /* in files of several stars that were loaded without them */
     double seconds, points_per_second, seconds_left; /* NAN until known */
 };
 struct campaign_load_options {
@@ -77,22 +99,32 @@ struct campaign_load_options {
     size_t path_count;
     const char *catalogue; /* path, or NULL */
     struct lightcurve_mapping mapping;
-    /* Called now and then from the loading thread; false cancels. May be NULL. */
+    /* Called now and then from the thread that loads; false cancels. May be NULL. */
     bool (*progress)(void *context, const struct campaign_load_progress *progress);
-    /* Called for each refused file. May be NULL. */
+    /* Called for each refused file, and for a loaded one that some of its stars were left out of;
+     * from the thread that loads. May be NULL. */
     void (*refused)(void *context, const char *label, const char *reason);
     void *context;
 };
 /* Load paths as a batch, or go on with an unfinished batch of that name: files whose bytes are
  * there already are passed over as repeated. Reading, cleaning and trends run on the pool; files
  * are stored in groups, each in one transaction. BASE_CANCELLED and BASE_DISK_FULL leave a batch
- * that a second call resumes. True even when some files were refused (progress.files_refused). */
+ * that a second call resumes. True even when some files were refused (progress.files_refused).
+ * While no file could be loaded at all the batch stays unfinished, so that the same name serves
+ * once the files are mended. BASE_CONFLICT: a finished batch has that name. BASE_NOT_FOUND: a path
+ * is not there; nothing was begun. */
 bool campaign_load(struct campaign *campaign, const struct campaign_load_options *options,
                    struct campaign_load_progress *result, struct base_error *error);
+/* Take a batch's segments out of the queue; reviews stay. BASE_NOT_FOUND. */
+bool campaign_batch_withdraw(struct campaign *campaign, int64_t batch, struct base_error *error);
 
 /* ---- handing out ------------------------------------------------------------------------- */
 
-#define CAMPAIGN_LEASE_SIZE 140 /* text of a lease, with NUL */
+#define CAMPAIGN_LEASE_SIZE 140      /* text of a lease, with NUL */
+#define CAMPAIGN_LEASES_HELD_MAX 100 /* live leases of one person */
+#define CAMPAIGN_LEASES_MAX 2000000  /* remembered leases of all people, live and lately ended */
+#define CAMPAIGN_LEASE_AFTER_MS                                                                    \
+    86400000 /* how long after its end a lease still lets its holder see the segment */
 
 struct campaign_lease {
     char text[CAMPAIGN_LEASE_SIZE]; /* sealed: person, segment, end and a nonce; holds over a
@@ -100,8 +132,9 @@ struct campaign_lease {
     int64_t expires_ms;
     struct store_segment segment;
 };
-/* Hand out the open segment that needs a look most and that this person has not seen. *found is
- * false when nothing is left for them. O(log n) on average. */
+/* Hand out the open segment with the fewest looks and live leases that this person has neither seen
+ * nor holds; one of them at random. *found is false when nothing is left for them. BASE_BUSY over
+ * CAMPAIGN_LEASES_HELD_MAX or CAMPAIGN_LEASES_MAX. O(log n) on average. */
 bool campaign_lease_take(struct campaign *campaign, struct base_arena *arena, int64_t person,
                          struct campaign_lease *out, bool *found, struct base_error *error);
 struct campaign_lease_read {
@@ -113,12 +146,18 @@ struct campaign_lease_read {
 bool campaign_lease_open(struct campaign *campaign, const char *text,
                          struct campaign_lease_read *out, struct base_error *error);
 /* Has this person a lease, live or lately ended, or a review on the segment? Then they may see it.
- */
+ * Leases are remembered in memory, so after a restart this knows of reviews only. */
 bool campaign_may_see(struct campaign *campaign, int64_t person, int64_t segment);
+/* The same, or the person shows the text of a lease (NULL: none) that is ours, theirs, for this
+ * segment, and ended at most CAMPAIGN_LEASE_AFTER_MS ago. The seal itself is the proof, so this
+ * holds over a restart, and a page that sends its lease along never loses its segment. */
+bool campaign_may_see_with(struct campaign *campaign, int64_t person, int64_t segment,
+                           const char *lease);
 
 enum campaign_view { CAMPAIGN_AS_MEASURED = 0, CAMPAIGN_TREND_REMOVED = 1 };
 
-/* A segment's flux as plain arrays from the arena. */
+/* A segment's flux as plain arrays from the arena. Reads and unpacks the whole light curve, so what
+ * is asked for often is for the caller to keep. */
 struct campaign_flux {
     size_t count;
     const double *time, *flux; /* flux relative, about 1 */
@@ -131,10 +170,12 @@ bool campaign_flux_read(struct campaign *campaign, struct base_arena *arena,
 
 /* ---- taking reviews ---------------------------------------------------------------------- */
 
+#define CAMPAIGN_REVIEWS_WAITING_MAX 4096 /* more than this waiting for the writer: BASE_BUSY */
+
 /* Hand a review to the writer. It gathers what is waiting into one transaction and then calls
  * done(context, ok, error) on its own thread, after the commit, exactly once; `review` and what it
- * points to must live until then. False (BASE_BUSY) when too many are waiting: done is not called.
- */
+ * points to must live until then. With ok, what became of it is in review->outcome. False
+ * (BASE_BUSY) when too many are waiting: done is not called. */
 bool campaign_review_submit(struct campaign *campaign, struct store_review_new *review,
                             void (*done)(void *context, bool ok, const struct base_error *error),
                             void *context, struct base_error *error);
@@ -145,7 +186,12 @@ bool campaign_review_submit(struct campaign *campaign, struct store_review_new *
 bool campaign_review_check(struct campaign *campaign, const struct store_segment *segment,
                            struct store_mark *marks, size_t count, struct base_error *error);
 
-/* Reviews made elsewhere, from a CSV file of the documented columns. BASE_INVALID with the line. */
+/* Reviews made elsewhere, from a CSV file of the documented columns: review, reviewer, star,
+ * segment_starts, segment_ends, submitted, mark_starts, mark_ends, mark_low, mark_high, certainty;
+ * others are passed over. A reviewer is found or made by handle, without a passphrase. A look
+ * counts for the star's segment that shares most with it, which must be at least half of both.
+ * A review that does not fit is refused with its line and the others are taken; adding the same
+ * file again changes nothing. BASE_INVALID with the line when the file itself makes no sense. */
 struct campaign_reviews_added {
     uint64_t reviews, marks, repeated, refused;
 };
@@ -161,7 +207,8 @@ bool campaign_reviews_add_file(struct campaign *campaign, const char *path,
 bool campaign_run(struct campaign *campaign,
                   void (*progress)(void *context, double fraction, const char *stage),
                   void *context, int64_t *run, struct base_error *error);
-/* Ask for a run in the background: by hand, or by itself after enough reviews or minutes. */
+/* Ask for a run in the background; one starts by itself after enough new reviews or minutes.
+ * BASE_CONFLICT when one is at work or asked for already. */
 bool campaign_run_ask(struct campaign *campaign, struct base_error *error);
 /* Is a run at work, how far, and how did the last one end? */
 struct campaign_run_state {
@@ -172,7 +219,7 @@ struct campaign_run_state {
 };
 struct campaign_run_state campaign_run_state_now(struct campaign *campaign);
 
-/* Flags of a candidate: bit, name, sentence. */
+/* Flags of a candidate: bit, name, sentence. The thresholds are common practice, no source. */
 /* clang-format off */
 #define CAMPAIGN_FLAGS(X) \
     X(1,  near_gap,     "An edge of the dip lies within half its duration of a gap.") \
@@ -182,14 +229,5 @@ struct campaign_run_state campaign_run_state_now(struct campaign *campaign);
     X(16, brightening,  "The flux rises here instead of falling.") \
     X(32, lopsided,     "The two halves of the dip differ much.")
 /* clang-format on */
-
-/* ---- tables ------------------------------------------------------------------------------ */
-
-enum campaign_table {
-    CAMPAIGN_CANDIDATES,
-    CAMPAIGN_REVIEWERS,
-    CAMPAIGN_REVIEWS,
-    CAMPAIGN_COMPLETENESS
-};
 
 #endif

@@ -47,4 +47,10 @@ struct campaign_setting {
 extern const struct campaign_setting campaign_setting_table[];
 extern const unsigned campaign_setting_count;
 
+/* The value of row `index` of the table; every setting is a number. */
+double campaign_setting_value(const struct campaign_settings *settings, unsigned index);
+
+/* Every setting at its default. */
+struct campaign_settings campaign_settings_standard(void);
+
 #endif
