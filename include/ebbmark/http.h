@@ -102,6 +102,21 @@ void http_stop(struct http_server *server, double grace_s);
 /* Drop the cached identity of a person (signed out, suspended, role changed), or of all (0). */
 void http_identity_forget(struct http_server *server, int64_t person);
 
+/* What the server is doing, for /metrics. */
+struct http_counts {
+    size_t connections, in_flight, waiting; /* open; being answered; of those, for a worker */
+    uint64_t answers[6]; /* since the start, by the status's first digit; 0: cut off before one */
+};
+void http_count(struct http_server *server, struct http_counts *out);
+
+/* The table of problems (http/problems.def), for whoever describes them. */
+struct http_problem_kind {
+    const char *kind;
+    unsigned status, retry_after_s; /* 0: no Retry-After */
+    const char *title;
+};
+const struct http_problem_kind *http_problem_kinds(size_t *count);
+
 /* ---- reading the request ------------------------------------------------------------------ */
 
 struct base_arena *http_arena(struct http_exchange *exchange); /* freed after the answer is sent */
