@@ -115,6 +115,12 @@ $(B)/tests/reference/%: tests/reference/%.c $(foreach r,$(pure_rooms),$(call arc
 		-Wl,--start-group $(foreach r,$(pure_rooms),$(call archive,$(r))) -Wl,--end-group \
 		$(foreach r,$(pure_rooms),$(LIBS_$(r))) -lz -o $@
 
+# Fuzz targets of the pure rooms: make build/fuzz/csv && build/fuzz/csv FOLDER tests/fuzz/csv-seeds
+$(OUT)/fuzz/%: tests/fuzz/%.c $(foreach r,$(pure_rooms),$(call sources,$(r)))
+	@mkdir -p $(@D)
+	clang $(CPPFLAGS) -std=c17 -g -O1 -pthread -fsanitize=fuzzer,address,undefined \
+		-fno-sanitize-recover=undefined $^ $(foreach r,$(pure_rooms),$(LIBS_$(r))) -lz -o $@
+
 # ---- what is needed from Debian ----
 build_packages := gcc libc6-dev gzip libmicrohttpd-dev libsqlite3-dev libjansson-dev libcfitsio-dev \
 	libsodium-dev libgsl-dev libarchive-dev libcurl4-openssl-dev libunistring-dev zlib1g-dev
