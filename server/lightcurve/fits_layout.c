@@ -24,6 +24,7 @@ struct header {
     uint64_t cells;    /* product of all NAXISn */
     bool cells_absurd; /* the product does not fit 64 bits */
     int64_t axes_seen, extra, groups, fields;
+    bool misplaced;                  /* PCOUNT, GCOUNT or TFIELDS is not where a table has it */
     char kind[LIGHTCURVE_FITS_TEXT]; /* XTENSION; empty for the primary */
 };
 
@@ -296,6 +297,10 @@ static bool read_structure_card(struct header *header, struct base_error *error)
     } else if (strcmp(header->name, "TFIELDS") == 0 && header->fields < 0) {
         target = &header->fields;
     }
+    /* FITS 4.0, table 13: cards 6 to 8 of a table. cfitsio finds them nowhere else. */
+    header->misplaced = header->misplaced || (target == &header->extra && header->card != 5) ||
+                        (target == &header->groups && header->card != 6) ||
+                        (target == &header->fields && header->card != 7);
     if (target != NULL && (!value_whole(header, target) || (*target < 0 && header->card != 1)))
         return base_fail(error, BASE_INVALID, "The header's %s is not a whole number.",
                          header->name);
@@ -369,7 +374,7 @@ static bool check_table(const struct header *header, const struct lightcurve_fit
                         struct base_error *error)
 {
     if (header->bits != 8 || header->axes != 2 || header->groups != 1 || header->extra < 0 ||
-        header->fields < 0 || header->fields > LIGHTCURVE_FITS_COLUMNS_MAX)
+        header->fields < 0 || header->fields > LIGHTCURVE_FITS_COLUMNS_MAX || header->misplaced)
         return base_fail(error, BASE_INVALID,
                          "The header of the table in part %d contradicts the FITS standard.",
                          part->number);

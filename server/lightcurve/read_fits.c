@@ -11,6 +11,10 @@
  * thread at a time, under this lock. */
 static pthread_mutex_t one_at_a_time = PTHREAD_MUTEX_INITIALIZER;
 
+/* Rows read at a time fit into cfitsio's buffers, so that the table passes through them once for
+ * all columns (fits_get_rowsize says the same, but divides by zero on some damaged headers). */
+#define BLOCK_BYTES ((size_t)30 * LIGHTCURVE_FITS_BLOCK)
+
 /* One table while it is read. */
 struct table {
     fitsfile *file;
@@ -173,21 +177,19 @@ static bool open_table(struct table *table, void **data, size_t *size, struct ba
     int status = 0, kind = 0;
     LONGLONG rows = 0, header_at = 0, data_at = 0, ends_at = 0;
     int columns = 0;
-    long block = 0;
     if (fits_open_memfile(&table->file, "memory", READONLY, data, size, 0, NULL, &status) != 0)
         return fail_fits(status, "open the file", error);
     fits_movabs_hdu(table->file, part->number, &kind, &status);
     fits_get_num_rowsll(table->file, &rows, &status);
     fits_get_num_cols(table->file, &columns, &status);
     fits_get_hduaddrll(table->file, &header_at, &data_at, &ends_at, &status);
-    fits_get_rowsize(table->file, &block, &status);
     if (status != 0)
         return fail_fits(status, "read the table's header", error);
-    if (kind != BINARY_TBL || (uint64_t)rows != part->rows ||
+    if (kind != BINARY_TBL || part->row_bytes == 0 || (uint64_t)rows != part->rows ||
         (size_t)columns != part->column_count || (uint64_t)data_at != part->data_at)
         return base_fail(error, BASE_INVALID, "The header of part %d contradicts itself.",
                          part->number);
-    table->block = block < 1 ? 1 : (size_t)block;
+    table->block = part->row_bytes < BLOCK_BYTES ? BLOCK_BYTES / (size_t)part->row_bytes : 1;
     return true;
 }
 

@@ -299,6 +299,28 @@ static void absurd_sizes_are_refused(void **state)
     check_refused("16", "3", "2", TIME_AND "TFORM2  = 'W'", BASE_INVALID, "Column 2");
 }
 
+/* Found by fuzzing: cfitsio takes such a unit for an image and then divides by its cell size, 0. */
+static void a_table_whose_sizes_stand_out_of_place_is_refused(void **state)
+{
+    (void)state;
+    struct base_text file = {0};
+    struct lightcurve_reading reading;
+    struct base_error error;
+    primary(&file, NULL);
+    cards(&file, "XTENSION= 'BINTABLE'\nBITPIX  =                    8\n"
+                 "NAXIS   =                    2\nNAXIS1  =                   16\n"
+                 "NAXIS2  =                    3\nPCOUNT  =                    0\n"
+                 "GCOUNT  =                    1\nCOMMENT between\n"
+                 "TFIELDS =                    2\n" TIME_AND "TFORM2  = 'D'\nEND");
+    pad(&file, ' ');
+    for (int i = 0; i < 6; i++)
+        real64(&file, i);
+    pad(&file, '\0');
+    assert_fails(read_text(&file, &reading, &error), error, BASE_INVALID,
+                 "contradicts the FITS standard");
+    base_text_free(&file);
+}
+
 static void columns_of_the_wrong_kind_are_refused(void **state)
 {
     (void)state;
@@ -672,6 +694,7 @@ int main(void)
         cmocka_unit_test(a_file_cut_short_anywhere_is_refused),
         cmocka_unit_test(a_file_without_its_last_padding_is_read),
         cmocka_unit_test(absurd_sizes_are_refused),
+        cmocka_unit_test(a_table_whose_sizes_stand_out_of_place_is_refused),
         cmocka_unit_test(columns_of_the_wrong_kind_are_refused),
         cmocka_unit_test(a_table_without_the_columns_says_which_is_missing),
         cmocka_unit_test(a_table_of_nothing_but_missing_values_is_refused),
