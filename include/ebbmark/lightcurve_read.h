@@ -21,7 +21,10 @@
 /* Which columns and header keywords to take; empty means the defaults of the design:
  * time: a column named TIME (any case); flux: a column whose name ends in FLUX and is not an error
  * column, the longest such name, the first of equals; quality: QUALITY, or none; error: the flux
- * column's name followed by _ERR, or none. */
+ * column's name followed by _ERR, or none; star: STAR in a CSV, none in FITS. A column that is
+ * named must be there; "-" for error, quality or star means that there is none. In FITS the columns
+ * hold one number a row (star: text); in CSV a name stands without its unit, `time [d]` being
+ * "time". */
 struct lightcurve_mapping {
     char time[72], flux[72], error[72], quality[72], star[72]; /* column names */
     char key_name[12], key_ra[12], key_dec[12], key_magnitude[12], key_temperature[12],
@@ -29,7 +32,7 @@ struct lightcurve_mapping {
                          */
 };
 
-/* What one file held. Owned by the struct; free with lightcurve_read_free. */
+/* What one file held. Owned by the struct; free with lightcurve_reading_free. */
 struct lightcurve_reading {
     struct lightcurve_raw *curves;
     size_t count; /* at least 1 on success */
@@ -39,6 +42,10 @@ void lightcurve_reading_free(struct lightcurve_reading *reading);
 /* Read one FITS or CSV file held in memory. `name` is used for messages and, where nothing else
  * names the star, its base name without the extension does. The kind is told from the content, not
  * the name: FITS begins with "SIMPLE  =" (gzip-compressed FITS and CSV are accepted).
+ * Times are turned into days where the column's unit, or else TIMEUNIT, is another (d where none is
+ * stated), and TIMEZERO is added. The reference is worded like "BJD_TDB - 2457000", from BJDREF*,
+ * MJDREF* or JDREF* with TIMESYS and TIMEREF, else from the unit's text, else it is "unstated".
+ * Star properties outside their range in a FITS header are taken as unknown.
  * Errors are BASE_INVALID ("no flux column", "truncated: …", "line 12: …"), BASE_TOO_LARGE or
  * BASE_MEMORY, never a crash. On failure `out` is zeroed. */
 bool lightcurve_read_bytes(const char *name, const void *data, size_t size,
@@ -52,8 +59,9 @@ typedef bool lightcurve_visit(void *context, const char *label, const void *data
                               const struct base_error *reason);
 
 /* Visit every light-curve file of a path: the file itself, a folder in the order of its sorted
- * names (recursively; links out of it are not followed), or the entries of an archive. Names that
- * start with a dot, directories, README* and non-regular entries are passed over. Returns false
+ * names (recursively; links in it are not followed), or the entries of an archive, which may be
+ * bare or in a folder, but not in an archive. Names that start with a dot, directories, README* and
+ * non-regular entries are passed over. Labels begin with the path as given. Returns false
  * when the path itself cannot be read; a bad entry is reported to the visitor and does not stop
  * the walk. A visitor that stops gives BASE_CANCELLED. */
 bool lightcurve_walk(const char *path, lightcurve_visit *visit, void *context,
@@ -64,7 +72,8 @@ bool lightcurve_walk_count(const char *path, size_t *files, uint64_t *bytes,
                            struct base_error *error);
 
 /* A star catalogue: CSV with a header; column `star` (or name), and any of ra, dec, magnitude,
- * temperature, radius, mass. Sorted by name. Free with lightcurve_catalogue_free. */
+ * temperature, radius, mass. Sorted by name. A bad row (not a number, out of range, a name that
+ * stands twice) refuses the catalogue with its line. Free with lightcurve_catalogue_free. */
 struct lightcurve_catalogue {
     struct lightcurve_star *stars;
     size_t count;
