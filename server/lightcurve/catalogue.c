@@ -110,22 +110,27 @@ static bool read_row(const struct lightcurve_csv *csv, const struct plan *plan, 
     return true;
 }
 
-static bool rows_reserve(struct rows *rows, struct base_error *error)
+/* The place of the next row, NULL with `error` when there is no room for it. */
+static struct row *rows_next(struct rows *rows, struct base_error *error)
 {
     if (rows->count < rows->room)
-        return true;
-    if (rows->count == LIGHTCURVE_CATALOGUE_ROWS_MAX)
-        return base_fail(error, BASE_TOO_LARGE, "The catalogue has more than %d stars, the limit.",
-                         LIGHTCURVE_CATALOGUE_ROWS_MAX);
+        return &rows->list[rows->count];
+    if (rows->count == LIGHTCURVE_CATALOGUE_ROWS_MAX) {
+        (void)base_fail(error, BASE_TOO_LARGE, "The catalogue has more than %d stars, the limit.",
+                        LIGHTCURVE_CATALOGUE_ROWS_MAX);
+        return NULL;
+    }
     size_t room = rows->room == 0 ? 256 : rows->room * 2;
     if (room > LIGHTCURVE_CATALOGUE_ROWS_MAX)
         room = LIGHTCURVE_CATALOGUE_ROWS_MAX;
     struct row *list = realloc(rows->list, room * sizeof *list);
-    if (list == NULL)
-        return base_fail(error, BASE_MEMORY, "There is not enough memory to read the catalogue.");
+    if (list == NULL) {
+        (void)base_fail(error, BASE_MEMORY, "There is not enough memory to read the catalogue.");
+        return NULL;
+    }
     rows->list = list;
     rows->room = room;
-    return true;
+    return &list[rows->count];
 }
 
 static bool read_rows(struct lightcurve_csv *csv, const struct plan *plan, struct rows *rows,
@@ -137,7 +142,8 @@ static bool read_rows(struct lightcurve_csv *csv, const struct plan *plan, struc
             return false;
         if (!found)
             return true;
-        if (!rows_reserve(rows, error) || !read_row(csv, plan, &rows->list[rows->count], error))
+        struct row *row = rows_next(rows, error);
+        if (row == NULL || !read_row(csv, plan, row, error))
             return false;
         rows->count++;
     }

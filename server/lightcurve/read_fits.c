@@ -367,7 +367,7 @@ static bool read_table(const char *star, const unsigned char *data, size_t size,
     struct lightcurve_gather gather = {0};
     char reference[LIGHTCURVE_REFERENCE_SIZE];
     unsigned char *padded = NULL;
-    void *memory = (void *)(uintptr_t)data;
+    void *memory = (void *)data;
     bool locked = false;
     if (!check_rows(&table, error) || !read_reference(&table, reference, error))
         goto end;
