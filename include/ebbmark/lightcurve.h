@@ -17,6 +17,8 @@
 #define LIGHTCURVE_REFERENCE_SIZE 48  /* bytes of a time reference with its NUL */
 #define LIGHTCURVE_POINTS_MIN 100     /* fewer usable points than this is refused */
 #define LIGHTCURVE_POINTS_MAX 5000000 /* more points in one light curve than this is refused */
+#define LIGHTCURVE_TIME_MAX_D 1e9     /* a time further from its reference counts as missing */
+#define LIGHTCURVE_FLUX_MAX 1e9       /* flux further from 0 than this many medians does so too */
 
 /* What is known of a star; NAN where it is not. */
 struct lightcurve_star {
@@ -57,10 +59,12 @@ struct lightcurve {
 void lightcurve_free(struct lightcurve *curve);
 
 /* Drop non-finite values and cadences with any of `quality_mask`'s bits, sort by time, drop exact
- * repeats of a time (the first is kept), divide by the median. Low points are never clipped.
- * BASE_INVALID with the stated reason when all values are missing, fewer than
+ * repeats of a time (the first is kept), divide by the median. Low points are never clipped. An
+ * error that is not finite and positive becomes the median of the others; where none is good,
+ * out->error is NULL. BASE_INVALID with the stated reason when all values are missing, fewer than
  * LIGHTCURVE_POINTS_MIN are left, the median is not positive, or times do not increase after
- * sorting (every time the same). `raw` is left as it was. On failure `out` is zeroed. */
+ * sorting (every time the same); BASE_TOO_LARGE above LIGHTCURVE_POINTS_MAX; BASE_MEMORY. `raw` is
+ * left as it was. On failure `out` is zeroed. */
 bool lightcurve_clean(const struct lightcurve_raw *raw, uint32_t quality_mask,
                       struct lightcurve *out, struct base_error *error);
 
@@ -87,8 +91,10 @@ struct lightcurve_span {
  * where that is possible: a boundary that would fall within length/4 of a gap moves to the gap, and
  * then needs no overlap. Every point belongs to at least one segment, except in stretches dropped
  * as too short to show (isolated by gaps longer than a segment, shorter than least_d): their
- * points are counted in *dropped_points. `*out` is malloc'd and the caller frees it. A light curve
- * shorter than least_d in all gives one segment. */
+ * points are counted in *dropped_points. `*out` is malloc'd and the caller frees it. Where every
+ * stretch is too short the longest is kept, so that a light curve with points always gives at least
+ * one segment. No segment is longer than 1.5 x length_d. BASE_INVALID for settings out of range,
+ * BASE_MEMORY. */
 bool lightcurve_cut(const struct lightcurve *curve, const struct lightcurve_cut_settings *settings,
                     struct lightcurve_span **out, size_t *count, size_t *dropped_points,
                     struct base_error *error);

@@ -1,0 +1,267 @@
+/*
+ * The box search. With the line through all points taken out first, and time counted from its
+ * weighted mean, a box over [first, end) changes chi2 by (sum w r)^2 / norm, where norm = W - W^2 /
+ * W_all - (sum w t)^2 / (sum w t^2)_all; sums over any range come from running totals, so that each
+ * box costs the same whatever its length.
+ */
+#include <math.h>
+#include <stdlib.h>
+
+#include "dip.h"
+
+#define LENGTH_RATIO 1.1    /* of one box length tried to the next */
+#define STEPS_A_LENGTH 12.0 /* positions tried in one box length */
+#define LIKENESS_LEAST 0.15 /* common part over union of a box and the marked interval */
+#define BOX_POINTS_LEAST 2
+#define BESIDE_LEAST 3        /* points outside the box */
+#define BESIDE_LEAST_A_SIDE 2 /* on each side, where a slope is fitted */
+#define EDGE_REACH 400        /* edge positions either side that are weighed for the error */
+
+struct totals {
+    const struct dip_points *points;
+    const struct dip_bounds *bounds;
+    double *weight, *moment, *residual; /* running sums of w, w t, w r; count + 1 each */
+    double all_weight, all_square;      /* sum w, sum w t^2 */
+    double level, slope, chi2;          /* of the line alone */
+};
+
+/* Where a box that takes in the point `first` starts: midway to the point before it, but never more
+ * than half a cadence away. */
+static double start_of(const struct dip_points *points, size_t first)
+{
+    double reach = 0.5 * points->cadence_d;
+    if (first > 0)
+        reach = fmin(reach, 0.5 * (points->time[first] - points->time[first - 1]));
+    return points->time[first] - reach;
+}
+
+static double end_of(const struct dip_points *points, size_t end)
+{
+    double reach = 0.5 * points->cadence_d;
+    if (end < points->count)
+        reach = fmin(reach, 0.5 * (points->time[end] - points->time[end - 1]));
+    return points->time[end - 1] + reach;
+}
+
+static bool totals_make(const struct dip_points *points, const struct dip_bounds *bounds,
+                        struct totals *totals)
+{
+    size_t n = points->count;
+    double *room = calloc(n + 1, 3 * sizeof *room);
+    if (room == NULL)
+        return false;
+    *totals = (struct totals){.points = points,
+                              .bounds = bounds,
+                              .weight = room,
+                              .moment = room + (n + 1),
+                              .residual = room + 2 * (n + 1)};
+    double flux = 0.0, cross = 0.0;
+    for (size_t i = 0; i < n; i++) {
+        double w = points->weight[i], t = points->time[i];
+        totals->all_weight += w;
+        totals->all_square += w * t * t;
+        flux += w * points->flux[i];
+        cross += w * t * points->flux[i];
+    }
+    totals->level = flux / totals->all_weight;
+    totals->slope = points->slope && totals->all_square > 0.0 ? cross / totals->all_square : 0.0;
+    for (size_t i = 0; i < n; i++) {
+        double w = points->weight[i], t = points->time[i];
+        double r = points->flux[i] - totals->level - totals->slope * t;
+        totals->weight[i + 1] = totals->weight[i] + w;
+        totals->moment[i + 1] = totals->moment[i] + w * t;
+        totals->residual[i + 1] = totals->residual[i] + w * r;
+        totals->chi2 += w * r * r;
+    }
+    return true;
+}
+
+/* What the box over [first, end) takes from chi2, and its depth with the depth's variance. -1 where
+ * there is no telling a box from the line. */
+static double gain_of(const struct totals *totals, size_t first, size_t end, double *depth,
+                      double *variance)
+{
+    double w = totals->weight[end] - totals->weight[first];
+    double m = totals->moment[end] - totals->moment[first];
+    double r = totals->residual[end] - totals->residual[first];
+    double norm = w - w * w / totals->all_weight;
+    if (totals->points->slope)
+        norm -= m * m / totals->all_square;
+    if (!(norm > 1e-9 * w))
+        return -1.0;
+    *depth = -r / norm;
+    *variance = 1.0 / norm;
+    return r * r / norm;
+}
+
+/* Is there enough inside, enough beside, and is this still the thing that was marked? */
+static bool allowed(const struct totals *totals, size_t first, size_t end)
+{
+    const struct dip_points *points = totals->points;
+    const struct dip_bounds *bounds = totals->bounds;
+    size_t before = first, after = points->count - end;
+    if (end < first + BOX_POINTS_LEAST || before + after < BESIDE_LEAST)
+        return false;
+    if (points->slope && (before < BESIDE_LEAST_A_SIDE || after < BESIDE_LEAST_A_SIDE))
+        return false;
+    double starts = start_of(points, first), ends = end_of(points, end);
+    double mid = 0.5 * (starts + ends);
+    if (mid < bounds->mid_least_d || mid > bounds->mid_most_d)
+        return false;
+    double common = fmin(ends, bounds->ends_d) - fmax(starts, bounds->starts_d);
+    double both = fmax(ends, bounds->ends_d) - fmin(starts, bounds->starts_d);
+    return common >= LIKENESS_LEAST * both;
+}
+
+struct best {
+    size_t first, end;
+    double gain;
+};
+
+/* Keep [first, end) if it is allowed, of the sign asked for, and takes more than the best so far.
+ */
+static bool try_box(const struct totals *totals, size_t first, size_t end, double sign,
+                    struct best *best)
+{
+    double depth, variance;
+    if (!allowed(totals, first, end))
+        return false;
+    double gain = gain_of(totals, first, end, &depth, &variance);
+    if (gain <= best->gain || depth * sign <= 0.0)
+        return false;
+    *best = (struct best){first, end, gain};
+    return true;
+}
+
+static size_t first_not_before(const struct dip_points *points, double at)
+{
+    size_t low = 0, high = points->count;
+    while (low < high) {
+        size_t middle = low + (high - low) / 2;
+        if (points->time[middle] < at)
+            low = middle + 1;
+        else
+            high = middle;
+    }
+    return low;
+}
+
+static struct best search_grid(const struct totals *totals, double sign, double least_gain)
+{
+    const struct dip_bounds *bounds = totals->bounds;
+    struct best best = {.gain = least_gain};
+    for (double length = bounds->length_least_d; length <= bounds->length_most_d;
+         length *= LENGTH_RATIO) {
+        double step = length / STEPS_A_LENGTH;
+        for (double mid = bounds->mid_least_d; mid <= bounds->mid_most_d; mid += step) {
+            size_t first = first_not_before(totals->points, mid - 0.5 * length);
+            size_t end = first_not_before(totals->points, mid + 0.5 * length);
+            try_box(totals, first, end, sign, &best);
+        }
+    }
+    return best;
+}
+
+/* Move either edge, by strides that shrink, while that takes more. */
+static void climb(const struct totals *totals, double sign, struct best *best)
+{
+    for (size_t stride = 8; stride > 0; stride /= 2) {
+        bool moved = true;
+        while (moved) {
+            size_t first = best->first, end = best->end;
+            moved = false;
+            if (first >= stride)
+                moved |= try_box(totals, first - stride, end, sign, best);
+            moved |= try_box(totals, first + stride, end, sign, best);
+            if (end > first + stride)
+                moved |= try_box(totals, first, end - stride, sign, best);
+            if (end + stride <= totals->points->count)
+                moved |= try_box(totals, first, end + stride, sign, best);
+        }
+    }
+}
+
+/* The spread of one edge with the other held: every position weighed by exp(-delta chi2 / 2), and
+ * the width of a cadence within which the edge cannot be seen. */
+static double edge_error(const struct totals *totals, const struct best *best, bool start)
+{
+    const struct dip_points *points = totals->points;
+    size_t here = start ? best->first : best->end;
+    size_t low = here > EDGE_REACH ? here - EDGE_REACH : 0, high = here + EDGE_REACH;
+    if (start && high > best->end - 1)
+        high = best->end - 1;
+    if (!start && low < best->first + 1)
+        low = best->first + 1;
+    double weights = 0.0, first_moment = 0.0, second_moment = 0.0;
+    double at = start ? start_of(points, here) : end_of(points, here);
+    for (size_t edge = low; edge <= high && edge <= points->count; edge++) {
+        size_t first = start ? edge : best->first, end = start ? best->end : edge;
+        double depth, variance, gain = gain_of(totals, first, end, &depth, &variance);
+        if (gain < 0.0)
+            continue;
+        double weight = exp(0.5 * fmin(gain - best->gain, 0.0));
+        double off = (start ? start_of(points, first) : end_of(points, end)) - at;
+        weights += weight;
+        first_moment += weight * off;
+        second_moment += weight * off * off;
+    }
+    double mean = first_moment / weights;
+    double variance = fmax(second_moment / weights - mean * mean, 0.0);
+    return sqrt(variance + points->cadence_d * points->cadence_d / 12.0);
+}
+
+static void fill_box(const struct totals *totals, const struct best *best, struct dip_box *box)
+{
+    double variance = NAN;
+    double gain = gain_of(totals, best->first, best->end, &box->depth, &variance);
+    double w = totals->weight[best->end] - totals->weight[best->first];
+    double m = totals->moment[best->end] - totals->moment[best->first];
+    box->found = true;
+    box->first = best->first;
+    box->end = best->end;
+    box->starts_d = start_of(totals->points, best->first);
+    box->ends_d = end_of(totals->points, best->end);
+    box->depth_error = sqrt(variance);
+    box->level = totals->level + box->depth * w / totals->all_weight;
+    box->slope = totals->slope;
+    if (totals->points->slope)
+        box->slope += box->depth * m / totals->all_square;
+    box->chi2 = fmax(totals->chi2 - gain, 0.0);
+    box->starts_error_d = edge_error(totals, best, true);
+    box->ends_error_d = edge_error(totals, best, false);
+}
+
+/* Does the marked interval itself stand above its surroundings? */
+static bool marked_is_high(const struct totals *totals)
+{
+    size_t first = first_not_before(totals->points, totals->bounds->starts_d);
+    size_t end = first_not_before(totals->points, totals->bounds->ends_d);
+    double depth, variance;
+    return end > first && gain_of(totals, first, end, &depth, &variance) > 0.0 && depth < 0.0;
+}
+
+bool dip_box_search(const struct dip_points *points, const struct dip_bounds *bounds,
+                    struct dip_box *box)
+{
+    struct totals totals;
+    *box = (struct dip_box){0};
+    if (!totals_make(points, bounds, &totals))
+        return false;
+    double power = totals.all_weight * totals.level * totals.level;
+    double least = 1e-20 * power; /* less is rounding */
+    struct best best = search_grid(&totals, 1.0, least);
+    double sign = 1.0;
+    if (marked_is_high(&totals)) {
+        struct best bump = search_grid(&totals, -1.0, least);
+        if (bump.gain > best.gain) {
+            best = bump;
+            sign = -1.0;
+        }
+    }
+    if (best.gain > least) {
+        climb(&totals, sign, &best);
+        fill_box(&totals, &best, box);
+    }
+    free(totals.weight);
+    return true;
+}
