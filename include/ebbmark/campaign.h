@@ -112,7 +112,7 @@ struct campaign_load_options {
  * that a second call resumes. True even when some files were refused (progress.files_refused).
  * While no file could be loaded at all the batch stays unfinished, so that the same name serves
  * once the files are mended. BASE_CONFLICT: a finished batch has that name. BASE_NOT_FOUND: a path
- * is not there; nothing was begun. */
+ * is not there; nothing was begun. BASE_BUSY: another load is at work. */
 bool campaign_load(struct campaign *campaign, const struct campaign_load_options *options,
                    struct campaign_load_progress *result, struct base_error *error);
 /* Take a batch's segments out of the queue; reviews stay. BASE_NOT_FOUND. */
