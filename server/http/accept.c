@@ -21,24 +21,30 @@ static struct span trimmed(const char *text, size_t length)
     return (struct span){text, length};
 }
 
-/* The next item of a comma-separated list; *at moves past it. False at the end. Commas within
- * quoted parameters do not part items. */
-static bool next_item(const char **at, struct span *item)
+/* The next piece up to a separator that is not within quotes; *rest moves past it. False at the
+ * end.
+ */
+static bool next_piece(struct span *rest, char separator, struct span *piece)
 {
-    if (**at == '\0')
+    if (rest->length == 0)
         return false;
-    const char *start = *at;
     bool quoted = false;
-    const char *end = start;
-    for (; *end != '\0' && (quoted || *end != ','); end++) {
-        if (quoted && *end == '\\' && end[1] != '\0')
+    size_t end = 0;
+    for (; end < rest->length && (quoted || rest->text[end] != separator); end++) {
+        if (quoted && rest->text[end] == '\\' && end + 1 < rest->length)
             end++;
-        else if (*end == '"')
+        else if (rest->text[end] == '"')
             quoted = !quoted;
     }
-    *item = trimmed(start, (size_t)(end - start));
-    *at = *end == ',' ? end + 1 : end;
+    *piece = trimmed(rest->text, end);
+    size_t past = end < rest->length ? end + 1 : end;
+    *rest = (struct span){rest->text + past, rest->length - past};
     return true;
+}
+
+static struct span whole(const char *header)
+{
+    return (struct span){header, strlen(header)};
 }
 
 /* A quality as thousandths: "0", "0.5", "1.000" (RFC 9110, 12.4.2); -1 when it is not one. */
@@ -61,19 +67,13 @@ static int quality_read(struct span value)
 /* Split "type/sub;level=1;q=0.5" into what it names and its quality (1000 when none is given). */
 static struct span item_name(struct span item, int *quality)
 {
+    struct span name = {item.text, 0}, parameter;
     *quality = 1000;
-    const char *semicolon = memchr(item.text, ';', item.length);
-    if (semicolon == NULL)
-        return item;
-    const char *end = item.text + item.length;
-    for (const char *at = semicolon; at != NULL && at < end;) {
-        const char *next = memchr(at + 1, ';', (size_t)(end - at - 1));
-        struct span parameter = trimmed(at + 1, (size_t)((next == NULL ? end : next) - at - 1));
+    (void)next_piece(&item, ';', &name);
+    while (next_piece(&item, ';', &parameter))
         if (parameter.length >= 2 && strncasecmp(parameter.text, "q=", 2) == 0)
-            *quality = quality_read(trimmed(parameter.text + 2, parameter.length - 2));
-        at = next;
-    }
-    return trimmed(item.text, (size_t)(semicolon - item.text));
+            *quality = quality_read((struct span){parameter.text + 2, parameter.length - 2});
+    return name;
 }
 
 /* How closely a range fits a type: 3 the same, 2 its family ("text" with a star), 1 any, 0 not. */
@@ -93,8 +93,8 @@ static int closeness(struct span range, const char *type)
 static int type_quality(const char *header, const char *type)
 {
     int best_fit = 0, quality = 0;
-    struct span item;
-    while (next_item(&header, &item)) {
+    struct span rest = whole(header), item;
+    while (next_piece(&rest, ',', &item)) {
         int said;
         struct span range = item_name(item, &said);
         int fit = closeness(range, type);
@@ -131,8 +131,8 @@ bool http_accept_gzip(const char *header)
     if (header == NULL)
         return false;
     int named = -1, any = -1;
-    struct span item;
-    while (next_item(&header, &item)) {
+    struct span rest = whole(header), item;
+    while (next_piece(&rest, ',', &item)) {
         int quality;
         struct span coding = item_name(item, &quality);
         if (is_word(coding, "gzip") || is_word(coding, "x-gzip"))
@@ -146,8 +146,8 @@ bool http_accept_gzip(const char *header)
 bool http_etag_is_listed(const char *header, const char *etag)
 {
     size_t length = strlen(etag);
-    struct span item;
-    while (next_item(&header, &item)) {
+    struct span rest = whole(header), item;
+    while (next_piece(&rest, ',', &item)) {
         if (item.length == 1 && item.text[0] == '*')
             return true;
         if (item.length > 2 && item.text[0] == 'W' && item.text[1] == '/')

@@ -14,6 +14,27 @@ static const struct {
 #undef X
 };
 
+/* Blanks after a value are not part of it (RFC 9110, 5.5), but the library leaves them there; for
+ * the rare one that has some, a copy without. */
+static const char *without_blanks(struct http_exchange *exchange, const char *value, size_t length)
+{
+    while (length > 0 && (value[length - 1] == ' ' || value[length - 1] == '\t'))
+        length--;
+    struct base_arena *arena = http_exchange_arena(exchange);
+    char *copy = arena == NULL ? NULL : base_arena_take(arena, length + 1);
+    if (copy == NULL) {
+        exchange->fault = "There is no memory for the header fields.";
+        return "";
+    }
+    return memcpy(copy, value, length);
+}
+
+/* Of these the library's own reading counts, blanks and all. */
+static bool is_framing(enum http_known slot)
+{
+    return slot == HTTP_KNOWN_CONTENT_LENGTH || slot == HTTP_KNOWN_TRANSFER_ENCODING;
+}
+
 static enum MHD_Result note_header(void *context, enum MHD_ValueKind kind, const char *name,
                                    size_t name_length, const char *value, size_t length)
 {
@@ -30,6 +51,8 @@ static enum MHD_Result note_header(void *context, enum MHD_ValueKind kind, const
             continue;
         if (exchange->known[i] != NULL && known[i].single)
             exchange->fault = "A header field that holds one value is there twice.";
+        if (length > 0 && strchr(" \t", value[length - 1]) != NULL && !is_framing(i))
+            value = without_blanks(exchange, value, length);
         exchange->known[i] = value;
         break;
     }

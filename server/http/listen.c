@@ -1,6 +1,7 @@
 #include <errno.h>
 #include <netdb.h>
 #include <netinet/in.h>
+#include <stdlib.h>
 #include <string.h>
 #include <sys/socket.h>
 #include <unistd.h>
@@ -20,7 +21,8 @@ static bool split(const char *where, char host[static 256], char port[static 8],
     if (bracketed)
         length -= 2;
     bool ok = colon != NULL && length > 0 && length < 256 && strlen(colon + 1) < 8 &&
-              colon[1] != '\0' && colon[1 + strspn(colon + 1, "0123456789")] == '\0';
+              colon[1] != '\0' && colon[1 + strspn(colon + 1, "0123456789")] == '\0' &&
+              strtoul(colon + 1, NULL, 10) <= UINT16_MAX;
     if (ok && !bracketed && memchr(start, ':', length) != NULL)
         ok = false;
     if (!ok)

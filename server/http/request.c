@@ -56,9 +56,12 @@ static enum MHD_Result copy_header(void *context, enum MHD_ValueKind kind, const
     if (pair == NULL)
         return MHD_NO;
     pair->name = base_arena_copy_text(arena, name);
-    pair->value = base_arena_copy_text(arena, value == NULL ? "" : value);
-    if (pair->name == NULL || pair->value == NULL)
+    char *copy = base_arena_copy_text(arena, value == NULL ? "" : value);
+    if (pair->name == NULL || copy == NULL)
         return MHD_NO;
+    for (size_t end = strlen(copy); end > 0 && strchr(" \t", copy[end - 1]) != NULL; end--)
+        copy[end - 1] = '\0';
+    pair->value = copy;
     struct http_pair **end = &exchange->headers;
     while (*end != NULL)
         end = &(*end)->next;

@@ -6,8 +6,9 @@
 
 #include "ebbmark/clock.h"
 
-#define LINE_MAX_SIZE 1024
 #define ADDRESS_MAX 256 /* characters of the target that are logged */
+/* That many, escaped, and what stands around them. */
+#define LINE_SIZE (6 * ADDRESS_MAX + 512)
 
 void http_request_log_begin(struct http_request_log *log, const struct base_log *to)
 {
@@ -41,11 +42,36 @@ void http_request_log_end(struct http_request_log *log)
     (void)pthread_mutex_destroy(&log->lock);
 }
 
+/* A line under construction. The sizes below bound it, so nothing checks for room; printf would,
+ * and is what a busy server spent most of its own time on. */
+struct line {
+    char text[LINE_SIZE];
+    size_t used;
+};
+
+static void put(struct line *line, const char *text)
+{
+    size_t length = strlen(text);
+    memcpy(line->text + line->used, text, length);
+    line->used += length;
+}
+
+static void put_number(struct line *line, uint64_t number)
+{
+    char digits[20];
+    size_t count = 0;
+    do
+        digits[count++] = (char)('0' + number % 10);
+    while ((number /= 10) > 0);
+    while (count > 0)
+        line->text[line->used++] = digits[--count];
+}
+
 /* The path without the query, escaped for JSON; what is not printable ASCII as \u00XX. */
-static void write_path(const char *address, char out[static 6 * ADDRESS_MAX + 1])
+static void put_path(struct line *line, const char *address)
 {
     static const char digits[] = "0123456789abcdef";
-    char *to = out;
+    char *to = line->text + line->used;
     for (size_t i = 0; i < ADDRESS_MAX && address[i] != '\0' && address[i] != '?'; i++) {
         unsigned char c = (unsigned char)address[i];
         if (c >= 0x20 && c < 0x7f && c != '"' && c != '\\') {
@@ -57,19 +83,7 @@ static void write_path(const char *address, char out[static 6 * ADDRESS_MAX + 1]
             to += 6;
         }
     }
-    *to = '\0';
-}
-
-/* The lock is held. */
-static const char *time_text(struct http_request_log *log, int64_t now_ms)
-{
-    if (now_ms / 1000 != log->second) {
-        char text[BASE_CLOCK_SIZE];
-        log->second = now_ms / 1000;
-        (void)snprintf(log->second_text, sizeof log->second_text, "%.19s",
-                       base_clock_rfc3339(text, now_ms));
-    }
-    return log->second_text;
+    line->used = (size_t)(to - line->text);
 }
 
 /* Whose address is logged: that of requests turned away, so that an operator can act on them; of
@@ -79,6 +93,7 @@ static bool names_address(unsigned status)
     return status == 401 || status == 403 || status == 429;
 }
 
+/* The method as a word of ours: what a client made up does not belong in a log. */
 static const char *method_text(const char *method)
 {
     static const char *const known[] = {"GET", "HEAD", "POST", "PATCH", "DELETE", "PUT", "OPTIONS"};
@@ -88,41 +103,76 @@ static const char *method_text(const char *method)
     return "other";
 }
 
+/* All but the time, which depends on the lock. */
+static void put_request(struct line *line, const struct http_exchange *exchange, double took_s,
+                        bool cut)
+{
+    uint64_t tenths_ms = took_s > 0.0 ? (uint64_t)(took_s * 10000.0 + 0.5) : 0;
+    put(line, "\",\"event\":\"request\",\"request\":\"");
+    put(line, exchange->id);
+    put(line, "\",\"method\":\"");
+    put(line, method_text(exchange->method));
+    put(line, "\",\"path\":\"");
+    put_path(line, exchange->address);
+    put(line, "\",\"status\":");
+    put_number(line, exchange->sent_status);
+    put(line, ",\"ms\":");
+    put_number(line, tenths_ms / 10);
+    put(line, ".");
+    put_number(line, tenths_ms % 10);
+    put(line, ",\"person\":");
+    put_number(line, (uint64_t)exchange->identity.person);
+    if (exchange->refused_at != NULL) {
+        put(line, ",\"refused_at\":\"");
+        put(line, exchange->refused_at);
+        put(line, "\"");
+    }
+    if (names_address(exchange->sent_status)) {
+        char address[HTTP_IP_SIZE];
+        put(line, ",\"from\":\"");
+        put(line, http_ip_write(&exchange->ip, address));
+        put(line, "\"");
+    }
+    put(line, cut ? ",\"cut\":true}\n" : "}\n");
+}
+
+/* The lock is held. "{"at":"2026-12-01T12:00:00.000Z","level":"info": the text of the second is
+ * made once. */
+static void put_start(struct http_request_log *log, struct line *line, bool is_warning)
+{
+    int64_t now_ms = base_clock_unix_ms();
+    if (now_ms / 1000 != log->second) {
+        char text[BASE_CLOCK_SIZE];
+        log->second = now_ms / 1000;
+        (void)snprintf(log->second_text, sizeof log->second_text, "%.19s",
+                       base_clock_rfc3339(text, now_ms));
+    }
+    uint64_t thousandths = (uint64_t)(now_ms % 1000);
+    put(line, "{\"at\":\"");
+    put(line, log->second_text);
+    put(line, thousandths < 10 ? ".00" : thousandths < 100 ? ".0" : ".");
+    put_number(line, thousandths);
+    put(line, is_warning ? "Z\",\"level\":\"warning" : "Z\",\"level\":\"info");
+}
+
 void http_request_log_note(struct http_request_log *log, const struct http_exchange *exchange,
                            double now_s, bool cut)
 {
-    enum base_log_level level = exchange->sent_status >= 500 ? BASE_LOG_WARNING : BASE_LOG_INFO;
+    bool is_warning = exchange->sent_status >= 500;
+    enum base_log_level level = is_warning ? BASE_LOG_WARNING : BASE_LOG_INFO;
     if (log->log == NULL || log->log->fd < 0 || level < log->log->least)
         return;
-    char path[6 * ADDRESS_MAX + 1], rest[256], address[HTTP_IP_SIZE] = "";
-    write_path(exchange->address, path);
-    if (names_address(exchange->sent_status))
-        (void)http_ip_write(&exchange->ip, address);
-    (void)snprintf(rest, sizeof rest,
-                   "\"request\":\"%s\",\"method\":\"%s\",\"status\":%u,\"ms\":%.1f,"
-                   "\"person\":%lld%s%s%s%s%s%s%s",
-                   exchange->id, method_text(exchange->method), exchange->sent_status,
-                   (now_s - exchange->began_s) * 1000.0, (long long)exchange->identity.person,
-                   exchange->refused_at != NULL ? ",\"refused_at\":\"" : "",
-                   exchange->refused_at != NULL ? exchange->refused_at : "",
-                   exchange->refused_at != NULL ? "\"" : "",
-                   address[0] != '\0' ? ",\"from\":\"" : "", address,
-                   address[0] != '\0' ? "\"" : "", cut ? ",\"cut\":true" : "");
-    int64_t now_ms = base_clock_unix_ms();
+    struct line request, start;
+    request.used = start.used = 0;
+    put_request(&request, exchange, now_s - exchange->began_s, cut);
     (void)pthread_mutex_lock(&log->lock);
-    char line[LINE_MAX_SIZE + sizeof path];
-    int length = snprintf(line, sizeof line,
-                          "{\"at\":\"%s.%03dZ\",\"level\":\"%s\",\"event\":\"request\",%s,"
-                          "\"path\":\"%s\"}\n",
-                          time_text(log, now_ms), (int)(now_ms % 1000),
-                          level == BASE_LOG_INFO ? "info" : "warning", rest, path);
-    if (length > 0 && (size_t)length < sizeof line) {
-        if (log->used + (size_t)length > sizeof log->piece)
-            write_out(log);
-        memcpy(log->piece + log->used, line, (size_t)length);
-        log->used += (size_t)length;
-        if (level != BASE_LOG_INFO)
-            write_out(log);
-    }
+    put_start(log, &start, is_warning);
+    if (log->used + start.used + request.used > sizeof log->piece)
+        write_out(log);
+    memcpy(log->piece + log->used, start.text, start.used);
+    memcpy(log->piece + log->used + start.used, request.text, request.used);
+    log->used += start.used + request.used;
+    if (is_warning)
+        write_out(log);
     (void)pthread_mutex_unlock(&log->lock);
 }
