@@ -250,6 +250,9 @@ bool store_segment_by_public_id(struct store *store, struct base_arena *arena,
                                 struct base_error *error);
 bool store_segment_by_id(struct store *store, struct base_arena *arena, int64_t id,
                          struct store_segment *out, struct base_error *error);
+/* All segments of a star, open or not, by id. */
+bool store_segments_of_star(struct store *store, struct base_arena *arena, int64_t star,
+                            struct store_segment **out, size_t *count, struct base_error *error);
 /* Every open segment, by id: for building the queue at start. Return false to stop. */
 struct store_open_segment {
     int64_t id, star;
