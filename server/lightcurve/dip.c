@@ -332,20 +332,26 @@ static void widen_errors(const struct dip_points *points, const struct dip_bound
     }
 }
 
-/* Points inside T14, and how much of it lies within half a cadence of one. */
-static void count_inside(const struct task *task, struct lightcurve_dip *out)
+static size_t points_within(const struct task *task, double mid_d, double length_d)
 {
-    double starts = out->mid_d - 0.5 * out->duration_d, ends = out->mid_d + 0.5 * out->duration_d;
+    double starts = mid_d - 0.5 * length_d, ends = mid_d + 0.5 * length_d;
+    return first_not_before(task->time, task->n, nextafter(ends, INFINITY)) -
+           first_not_before(task->time, task->n, starts);
+}
+
+/* How much of T14 lies within half a cadence of a point. */
+static double covered_share(const struct task *task, const struct lightcurve_dip *dip)
+{
+    double starts = dip->mid_d - 0.5 * dip->duration_d, ends = dip->mid_d + 0.5 * dip->duration_d;
     double half = 0.5 * task->cadence_d, covered = 0.0, until = starts;
     for (size_t i = first_not_before(task->time, task->n, starts - half);
          i < task->n && task->time[i] <= ends + half; i++) {
-        out->points_in += task->time[i] >= starts && task->time[i] <= ends;
         double from = fmax(task->time[i] - half, until), to = fmin(task->time[i] + half, ends);
         if (to > from)
             covered += to - from;
         until = fmax(until, to);
     }
-    out->covered = fmin(covered / out->duration_d, 1.0);
+    return fmin(covered / dip->duration_d, 1.0);
 }
 
 /* From `at` to the nearest gap or end of data in the direction of step; 0 when `at` lies in one. */
@@ -392,9 +398,11 @@ static void scale_errors(const struct task *task, const struct dip_points *point
         out->mid_error_d = out->duration_error_d = out->depth_error = NAN;
         return;
     }
-    if (out->points_in > 0) {
-        double white = task->noise->point / sqrt((double)out->points_in);
-        double of_mean = lightcurve_noise_of_mean(task->noise, out->duration_d, out->points_in);
+    double length = out->duration_d * (1.0 - out->ingress_fraction); /* at half depth */
+    size_t inside = points_within(task, out->mid_d, length);
+    if (inside > 0) {
+        double white = task->noise->point / sqrt((double)inside);
+        double of_mean = lightcurve_noise_of_mean(task->noise, length, inside);
         if (white > 0.0)
             factor = fmax(factor, of_mean / white);
         out->snr = of_mean > 0.0 ? out->depth / of_mean : NAN;
@@ -452,7 +460,8 @@ static bool measure(struct task *task, double *room, size_t *place, struct light
         return true;
     }
     out->points = task->end - task->first;
-    count_inside(task, out);
+    out->points_in = points_within(task, out->mid_d, out->duration_d);
+    out->covered = covered_share(task, out);
     scale_errors(task, &points, out);
     double starts = out->mid_d - 0.5 * out->duration_d, ends = out->mid_d + 0.5 * out->duration_d;
     out->gap_distance_d =

@@ -12,7 +12,10 @@
 #define LENGTH_RATIO 1.1    /* of one box length tried to the next */
 #define STEPS_A_LENGTH 12.0 /* positions tried in one box length */
 #define LIKENESS_LEAST 0.15 /* common part over union of a box and the marked interval */
+#define LENGTH_SPREAD 0.6   /* usual scatter of marks: of the log of their length … */
+#define MID_SPREAD 0.4      /* … and of their middle, in their length; from memory */
 #define BOX_POINTS_LEAST 2
+#define BESIDE_SHARE 0.4      /* least norm, in the weight inside */
 #define BESIDE_LEAST 3        /* points outside the box */
 #define BESIDE_LEAST_A_SIDE 2 /* on each side, where a slope is fitted */
 #define EDGE_REACH 400        /* edge positions either side that are weighed for the error */
@@ -23,6 +26,8 @@ struct totals {
     double *weight, *moment, *residual; /* running sums of w, w t, w r; count + 1 each */
     double all_weight, all_square;      /* sum w, sum w t^2 */
     double level, slope, chi2;          /* of the line alone */
+    double rounding;                    /* a gain no larger than this is none */
+    double unit;                        /* chi2 that one sigma is worth */
 };
 
 /* Where a box that takes in the point `first` starts: midway to the point before it, but never more
@@ -73,11 +78,14 @@ static bool totals_make(const struct dip_points *points, const struct dip_bounds
         totals->residual[i + 1] = totals->residual[i] + w * r;
         totals->chi2 += w * r * r;
     }
+    totals->rounding = 1e-20 * totals->all_weight * totals->level * totals->level;
+    totals->unit = points->scaled ? 1.0 : totals->chi2 / (double)n;
     return true;
 }
 
 /* What the box over [first, end) takes from chi2, and its depth with the depth's variance. -1 where
- * there is no telling a box from the line. */
+ * too little lies beside the box to tell it from the line: the variance is w / norm times that of
+ * the mean inside. */
 static double gain_of(const struct totals *totals, size_t first, size_t end, double *depth,
                       double *variance)
 {
@@ -87,7 +95,7 @@ static double gain_of(const struct totals *totals, size_t first, size_t end, dou
     double norm = w - w * w / totals->all_weight;
     if (totals->points->slope)
         norm -= m * m / totals->all_square;
-    if (!(norm > 1e-9 * w))
+    if (!(norm > BESIDE_SHARE * w))
         return -1.0;
     *depth = -r / norm;
     *variance = 1.0 / norm;
@@ -115,8 +123,21 @@ static bool allowed(const struct totals *totals, size_t first, size_t end)
 
 struct best {
     size_t first, end;
-    double gain;
+    double score; /* gain less penalty */
 };
+
+/* How much less likely, in chi2, a mark is to mean a box of other length or place. Without this the
+ * best of some thousand boxes would stand out of pure noise by several sigma. */
+static double penalty(const struct totals *totals, size_t first, size_t end)
+{
+    const struct dip_bounds *bounds = totals->bounds;
+    double starts = start_of(totals->points, first), ends = end_of(totals->points, end);
+    double length = bounds->ends_d - bounds->starts_d;
+    double longer = log((ends - starts) / length) / LENGTH_SPREAD;
+    double off = 0.5 * (starts + ends - bounds->starts_d - bounds->ends_d);
+    double later = off / (MID_SPREAD * length);
+    return totals->unit * (longer * longer + later * later);
+}
 
 /* Keep [first, end) if it is allowed, of the sign asked for, and takes more than the best so far.
  */
@@ -126,10 +147,13 @@ static bool try_box(const struct totals *totals, size_t first, size_t end, doubl
     double depth, variance;
     if (!allowed(totals, first, end))
         return false;
-    double gain = gain_of(totals, first, end, &depth, &variance);
-    if (gain <= best->gain || depth * sign <= 0.0)
+    double score = gain_of(totals, first, end, &depth, &variance);
+    if (score <= fmax(best->score, totals->rounding) || depth * sign <= 0.0)
         return false;
-    *best = (struct best){first, end, gain};
+    score -= penalty(totals, first, end);
+    if (score <= best->score)
+        return false;
+    *best = (struct best){first, end, score};
     return true;
 }
 
@@ -146,10 +170,10 @@ static size_t first_not_before(const struct dip_points *points, double at)
     return low;
 }
 
-static struct best search_grid(const struct totals *totals, double sign, double least_gain)
+static struct best search_grid(const struct totals *totals, double sign)
 {
     const struct dip_bounds *bounds = totals->bounds;
-    struct best best = {.gain = least_gain};
+    struct best best = {.score = -INFINITY};
     for (double length = bounds->length_least_d; length <= bounds->length_most_d;
          length *= LENGTH_RATIO) {
         double step = length / STEPS_A_LENGTH;
@@ -192,14 +216,15 @@ static double edge_error(const struct totals *totals, const struct best *best, b
         high = best->end - 1;
     if (!start && low < best->first + 1)
         low = best->first + 1;
-    double weights = 0.0, first_moment = 0.0, second_moment = 0.0;
+    double weights = 0.0, first_moment = 0.0, second_moment = 0.0, of_depth, of_variance;
+    double kept = gain_of(totals, best->first, best->end, &of_depth, &of_variance);
     double at = start ? start_of(points, here) : end_of(points, here);
     for (size_t edge = low; edge <= high && edge <= points->count; edge++) {
         size_t first = start ? edge : best->first, end = start ? best->end : edge;
         double depth, variance, gain = gain_of(totals, first, end, &depth, &variance);
         if (gain < 0.0)
             continue;
-        double weight = exp(0.5 * fmin(gain - best->gain, 0.0));
+        double weight = exp(0.5 * fmin(gain - kept, 0.0));
         double off = (start ? start_of(points, first) : end_of(points, end)) - at;
         weights += weight;
         first_moment += weight * off;
@@ -247,18 +272,16 @@ bool dip_box_search(const struct dip_points *points, const struct dip_bounds *bo
     *box = (struct dip_box){0};
     if (!totals_make(points, bounds, &totals))
         return false;
-    double power = totals.all_weight * totals.level * totals.level;
-    double least = 1e-20 * power; /* less is rounding */
-    struct best best = search_grid(&totals, 1.0, least);
+    struct best best = search_grid(&totals, 1.0);
     double sign = 1.0;
     if (marked_is_high(&totals)) {
-        struct best bump = search_grid(&totals, -1.0, least);
-        if (bump.gain > best.gain) {
+        struct best bump = search_grid(&totals, -1.0);
+        if (bump.score > best.score) {
             best = bump;
             sign = -1.0;
         }
     }
-    if (best.gain > least) {
+    if (best.end > 0) {
         climb(&totals, sign, &best);
         fill_box(&totals, &best, box);
     }

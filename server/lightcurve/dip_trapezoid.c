@@ -13,6 +13,11 @@
 #define SHAKE_LEAST 1e-3 /* a smaller gain in chi2 ends the shaking */
 #define SETTLED 1e-10    /* relative change of chi2 that ends the rounds */
 #define DAMPING_MOST 1e12
+/* How far the trapezoid may be from the best box, in the box's length. For a V the best box is two
+ * thirds of it long, for a box-like dip it is the dip. */
+#define MID_OFF 0.5
+#define LENGTH_LEAST 0.6
+#define LENGTH_MOST 2.2
 #define INGRESS_SEEN 0.25 /* an ingress of more than this share counts even in few points */
 
 static const double first_ingress[] = {0.05, 0.15, 0.3, 0.48};
@@ -193,11 +198,12 @@ static struct limits limits_of(const struct dip_points *points, const struct dip
         limits.least[a] = -INFINITY;
         limits.most[a] = INFINITY;
     }
-    limits.least[DIP_MID] = bounds->mid_least_d;
-    limits.most[DIP_MID] = bounds->mid_most_d;
-    limits.least[DIP_LENGTH] = bounds->length_least_d;
-    limits.most[DIP_LENGTH] = 2.0 * bounds->length_most_d;
-    double least = points->cadence_d / (box->ends_d - box->starts_d);
+    double width = box->ends_d - box->starts_d, mid = 0.5 * (box->starts_d + box->ends_d);
+    limits.least[DIP_MID] = fmax(mid - MID_OFF * width, bounds->mid_least_d);
+    limits.most[DIP_MID] = fmin(mid + MID_OFF * width, bounds->mid_most_d);
+    limits.least[DIP_LENGTH] = LENGTH_LEAST * width;
+    limits.most[DIP_LENGTH] = LENGTH_MOST * width;
+    double least = points->cadence_d / width;
     limits.least[DIP_INGRESS] = fmin(least, INGRESS_SEEN); /* shorter than a cadence is not seen */
     limits.most[DIP_INGRESS] = 0.5;
     return limits;
