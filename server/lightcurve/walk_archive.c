@@ -13,6 +13,8 @@
 /* One archive under way. */
 struct opened {
     struct archive *archive;
+    /* Ours, since libarchive does not look whether it could make one of its own. */
+    struct archive_entry *entry;
     int fd;
     const char *label;
     uint64_t packed;   /* bytes of the archive file */
@@ -165,9 +167,9 @@ static enum state visit_entry(struct lightcurve_walker *walker, struct opened *o
 
 static enum state next_entry(struct lightcurve_walker *walker, struct opened *opened)
 {
-    struct archive_entry *entry = NULL;
+    struct archive_entry *entry = opened->entry;
     struct base_error reason = {0};
-    int status = archive_read_next_header(opened->archive, &entry);
+    int status = archive_read_next_header2(opened->archive, entry);
     if (status == ARCHIVE_EOF)
         return END_OF_ARCHIVE;
     if (status == ARCHIVE_FATAL || status == ARCHIVE_RETRY) {
@@ -204,7 +206,9 @@ static bool open_archive(struct opened *opened, struct base_error *reason)
     if (opened->archive != NULL)
         (void)archive_read_free(opened->archive);
     opened->archive = archive_read_new();
-    if (opened->archive == NULL)
+    if (opened->entry == NULL)
+        opened->entry = archive_entry_new();
+    if (opened->archive == NULL || opened->entry == NULL)
         return base_fail(reason, BASE_MEMORY, "There is not enough memory to open the archive.");
     if (lseek(opened->fd, 0, SEEK_SET) != 0)
         return base_fail_errno(reason, errno, "Reading %s", opened->label);
@@ -225,8 +229,7 @@ static enum state reopen(struct lightcurve_walker *walker, struct opened *opened
     if (!open_archive(opened, &reason))
         return give_up(walker, opened, &reason);
     for (size_t i = 0; i < opened->entries; i++) {
-        struct archive_entry *entry = NULL;
-        int status = archive_read_next_header(opened->archive, &entry);
+        int status = archive_read_next_header2(opened->archive, opened->entry);
         if (status != ARCHIVE_OK && status != ARCHIVE_WARN) {
             word_damage(opened, &reason);
             return give_up(walker, opened, &reason);
@@ -245,6 +248,7 @@ bool lightcurve_walk_archive(struct lightcurve_walker *walker, int fd, uint64_t 
         state = state == GO_ON ? next_entry(walker, &opened) : reopen(walker, &opened);
     if (opened.archive != NULL)
         (void)archive_read_free(opened.archive);
+    archive_entry_free(opened.entry);
     free(opened.data);
     return state != STOP_WALK;
 }
