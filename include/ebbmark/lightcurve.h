@@ -93,8 +93,8 @@ struct lightcurve_span {
  * as too short to show (isolated by gaps longer than a segment, shorter than least_d): their
  * points are counted in *dropped_points. `*out` is malloc'd and the caller frees it. Where every
  * stretch is too short the longest is kept, so that a light curve with points always gives at least
- * one segment. No segment is longer than 1.5 x length_d. BASE_INVALID for settings out of range,
- * BASE_MEMORY. */
+ * one segment. No segment is longer than 1.5 x length_d and one step between points. BASE_INVALID
+ * for settings out of range, BASE_MEMORY. */
 bool lightcurve_cut(const struct lightcurve *curve, const struct lightcurve_cut_settings *settings,
                     struct lightcurve_span **out, size_t *count, size_t *dropped_points,
                     struct base_error *error);

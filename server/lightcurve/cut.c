@@ -8,6 +8,9 @@
 #include "ebbmark/lightcurve.h"
 #include "robust.h"
 
+/* What is left becomes one segment while it is no longer than this, in segments. */
+#define LONGEST_LAST 1.25
+
 struct cutter {
     const struct lightcurve *curve;
     const struct lightcurve_cut_settings *settings;
@@ -77,9 +80,10 @@ static bool cut_island(struct cutter *cutter, size_t first, size_t end, struct b
     size_t covered = first;
     for (;;) {
         double left = time[end - 1] - time[first];
-        double pieces = ceil((left - overlap) / (length - overlap) - 0.25);
-        if (pieces <= 1.0)
+        double exact = (left - overlap) / (length - overlap);
+        if (exact <= LONGEST_LAST)
             return add_span(cutter, first, end, error);
+        double pieces = fmax(round(exact), 2.0);
         double boundary = time[first] + (left + (pieces - 1.0) * overlap) / pieces;
         size_t after = gap_near(cutter, first, end, boundary), next = after;
         if (after == 0) {

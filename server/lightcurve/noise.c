@@ -113,6 +113,8 @@ double lightcurve_noise_of_mean(const struct lightcurve_noise *noise, double dur
                                 size_t points)
 {
     assert(points > 0);
+    if (isnan(noise->point))
+        return NAN;
     double white = noise->point / sqrt((double)points);
     double length_h = duration_d * HOURS_A_DAY;
     int below = -1, above = -1;
