@@ -3,20 +3,31 @@
 #include <errno.h>
 #include <fcntl.h>
 #include <stdlib.h>
+#include <string.h>
 #include <sys/socket.h>
+#include <time.h>
 #include <unistd.h>
 
+#include "ebbmark/clock.h"
+
 #define LINGER_S 2.0
+#define LINGER_TURN_MS 20
 
 void http_connections_begin(struct http_connections *connections)
 {
+    pthread_condattr_t monotonic;
     (void)pthread_mutex_init(&connections->lock, NULL);
+    (void)pthread_condattr_init(&monotonic);
+    (void)pthread_condattr_setclock(&monotonic, CLOCK_MONOTONIC);
+    (void)pthread_cond_init(&connections->wake, &monotonic);
+    (void)pthread_condattr_destroy(&monotonic);
 }
 
 void http_connections_end(struct http_connections *connections)
 {
     for (size_t i = 0; i < connections->lingering_count; i++)
         (void)close(connections->lingering[i].fd);
+    (void)pthread_cond_destroy(&connections->wake);
     (void)pthread_mutex_destroy(&connections->lock);
 }
 
@@ -40,16 +51,28 @@ struct http_connection *http_connection_opened(struct http_connections *connecti
     return connection;
 }
 
-/* Keep a second descriptor of the socket; when the list is full or there is none, the close is an
- * ordinary one. */
+static bool has_unread(int fd)
+{
+    char byte;
+    return recv(fd, &byte, 1, MSG_PEEK | MSG_DONTWAIT) > 0;
+}
+
+/* The lock is held. Keep a second descriptor of the socket; where there is no room for it the one
+ * that has lingered longest goes, and where there is no descriptor the close is an ordinary one. */
 static void linger(struct http_connections *connections, int fd, double now_s)
 {
-    if (connections->lingering_count == HTTP_LINGER_MAX)
-        return;
     int second = fcntl(fd, F_DUPFD_CLOEXEC, 0);
-    if (second >= 0)
-        connections->lingering[connections->lingering_count++] =
-            (struct http_lingering){second, now_s + LINGER_S};
+    if (second < 0)
+        return;
+    if (connections->lingering_count == HTTP_LINGER_MAX) {
+        (void)close(connections->lingering[0].fd);
+        memmove(connections->lingering, connections->lingering + 1,
+                (HTTP_LINGER_MAX - 1) * sizeof connections->lingering[0]);
+        connections->lingering_count--;
+    }
+    connections->lingering[connections->lingering_count++] =
+        (struct http_lingering){second, now_s + LINGER_S};
+    (void)pthread_cond_signal(&connections->wake);
 }
 
 void http_connection_closed(struct http_connections *connections,
@@ -58,7 +81,7 @@ void http_connection_closed(struct http_connections *connections,
     if (connection == NULL)
         return;
     (void)pthread_mutex_lock(&connections->lock);
-    if (connection->linger)
+    if (connection->linger || has_unread(connection->fd))
         linger(connections, connection->fd, now_s);
     if (connection->older != NULL)
         connection->older->newer = connection->newer;
@@ -85,24 +108,55 @@ static bool read_away(int fd)
     return true;
 }
 
-bool http_connections_sweep(struct http_connections *connections, double now_s, double most_s)
+/* The lock is held. */
+static void tend_lingering(struct http_connections *connections, double now_s)
+{
+    size_t kept = 0;
+    for (size_t i = 0; i < connections->lingering_count; i++) {
+        struct http_lingering one = connections->lingering[i];
+        if (now_s < one.until_s && read_away(one.fd))
+            connections->lingering[kept++] = one;
+        else
+            (void)close(one.fd);
+    }
+    connections->lingering_count = kept;
+}
+
+/* The lock is held. Wait for `most_ms`, or until somebody lingers or the end comes. */
+static void wait_a_while(struct http_connections *connections, long most_ms)
+{
+    struct timespec until;
+    (void)clock_gettime(CLOCK_MONOTONIC, &until);
+    until.tv_nsec += most_ms % 1000 * 1000000;
+    until.tv_sec += most_ms / 1000 + until.tv_nsec / 1000000000;
+    until.tv_nsec %= 1000000000;
+    (void)pthread_cond_timedwait(&connections->wake, &connections->lock, &until);
+}
+
+bool http_connections_tend(struct http_connections *connections, double most_s)
 {
     (void)pthread_mutex_lock(&connections->lock);
-    for (struct http_connection *at = connections->newest; at != NULL; at = at->older)
-        if (!atomic_load(&at->busy) && now_s - atomic_load(&at->idle_from_s) > most_s)
-            (void)shutdown(at->fd, SHUT_RDWR);
-    for (size_t i = 0; i < connections->lingering_count;) {
-        struct http_lingering *one = &connections->lingering[i];
-        if (now_s < one->until_s && read_away(one->fd)) {
-            i++;
-            continue;
-        }
-        (void)close(one->fd);
-        *one = connections->lingering[--connections->lingering_count];
+    if (!connections->ends)
+        wait_a_while(connections, connections->lingering_count > 0 ? LINGER_TURN_MS : 1000);
+    double now_s = base_clock_monotonic_s();
+    tend_lingering(connections, now_s);
+    if (now_s >= connections->next_sweep_s) {
+        connections->next_sweep_s = now_s + 1.0;
+        for (struct http_connection *at = connections->newest; at != NULL; at = at->older)
+            if (!atomic_load(&at->busy) && now_s - atomic_load(&at->idle_from_s) > most_s)
+                (void)shutdown(at->fd, SHUT_RDWR);
     }
-    bool any = connections->lingering_count > 0;
+    bool ends = connections->ends;
     (void)pthread_mutex_unlock(&connections->lock);
-    return any;
+    return !ends;
+}
+
+void http_connections_wake_for_end(struct http_connections *connections)
+{
+    (void)pthread_mutex_lock(&connections->lock);
+    connections->ends = true;
+    (void)pthread_cond_signal(&connections->wake);
+    (void)pthread_mutex_unlock(&connections->lock);
 }
 
 size_t http_connections_count(struct http_connections *connections)

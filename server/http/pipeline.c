@@ -222,21 +222,25 @@ static enum MHD_Result answer(struct http_exchange *exchange)
 
 void *http_pipeline_begin(void *context, const char *address, struct MHD_Connection *connection)
 {
-    (void)connection;
-    return http_exchange_new(context, address == NULL ? "" : address);
+    const union MHD_ConnectionInfo *info =
+        MHD_get_connection_info(connection, MHD_CONNECTION_INFO_SOCKET_CONTEXT);
+    if (info == NULL || info->socket_context == NULL)
+        return NULL;
+    struct http_exchange *exchange = http_exchange_new(context, address == NULL ? "" : address);
+    if (exchange != NULL) {
+        exchange->line = info->socket_context;
+        exchange->line->exchange = exchange;
+    }
+    return exchange;
 }
 
 /* The head is here. */
 static enum MHD_Result first_call(struct http_exchange *exchange, struct MHD_Connection *connection,
                                   const char *method, const char *version)
 {
-    const union MHD_ConnectionInfo *info =
-        MHD_get_connection_info(connection, MHD_CONNECTION_INFO_SOCKET_CONTEXT);
-    if (info == NULL || info->socket_context == NULL)
-        return MHD_NO;
     exchange->connection = connection;
-    exchange->line = info->socket_context;
     exchange->method = method;
+    exchange->is_head = strcmp(method, "HEAD") == 0;
     exchange->phase = HTTP_PHASE_BODY;
     (void)atomic_fetch_add(&exchange->server->in_flight, 1);
     atomic_store(&exchange->line->busy, true);
@@ -281,23 +285,27 @@ enum MHD_Result http_pipeline_step(void *server, struct MHD_Connection *connecti
     return answer(exchange);
 }
 
-void http_pipeline_end(void *context, struct MHD_Connection *connection, void **place,
-                       enum MHD_RequestTerminationCode how)
+void http_pipeline_finish(struct http_exchange *exchange, bool cut)
 {
-    struct http_server *server = context;
-    struct http_exchange *exchange = *place;
-    (void)connection;
-    *place = NULL;
-    if (exchange == NULL)
-        return;
+    struct http_server *server = exchange->server;
+    exchange->line->exchange = NULL;
     if (exchange->phase != HTTP_PHASE_HEAD) {
         double now_s = base_clock_monotonic_s();
         (void)atomic_fetch_add(&server->answers[exchange->sent_status / 100], 1);
-        http_request_log_note(&server->request_log, exchange, now_s,
-                              how != MHD_REQUEST_TERMINATED_COMPLETED_OK);
+        http_request_log_note(&server->request_log, exchange, now_s, cut);
         atomic_store(&exchange->line->idle_from_s, now_s);
         atomic_store(&exchange->line->busy, false);
         (void)atomic_fetch_sub(&server->in_flight, 1);
     }
     http_exchange_drop(exchange);
+}
+
+void http_pipeline_end(void *server, struct MHD_Connection *connection, void **place,
+                       enum MHD_RequestTerminationCode how)
+{
+    (void)server;
+    (void)connection;
+    if (*place != NULL)
+        http_pipeline_finish(*place, how != MHD_REQUEST_TERMINATED_COMPLETED_OK);
+    *place = NULL;
 }

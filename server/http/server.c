@@ -132,28 +132,11 @@ static void library_says(void *context, const char *format, va_list list)
     base_log_line(server->log, BASE_LOG_DEBUG, "http_library", "sentence", text, NULL);
 }
 
-/* Once a second, and oftener while refused connections linger. */
 static void *keep_house(void *context)
 {
     struct http_server *server = context;
-    bool lingers = false;
-    (void)pthread_mutex_lock(&server->housekeeper_lock);
-    while (!server->housekeeper_ends) {
-        struct timespec until;
-        (void)clock_gettime(CLOCK_MONOTONIC, &until);
-        until.tv_nsec += lingers ? 50000000 : 999999999;
-        if (until.tv_nsec >= 1000000000) {
-            until.tv_nsec -= 1000000000;
-            until.tv_sec++;
-        }
-        (void)pthread_cond_timedwait(&server->housekeeper_wake, &server->housekeeper_lock, &until);
-        (void)pthread_mutex_unlock(&server->housekeeper_lock);
+    while (http_connections_tend(&server->connections, 2.0 * server->timeout_s + 1.0))
         http_request_log_flush(&server->request_log);
-        lingers = http_connections_sweep(&server->connections, base_clock_monotonic_s(),
-                                         2.0 * server->timeout_s + 1.0);
-        (void)pthread_mutex_lock(&server->housekeeper_lock);
-    }
-    (void)pthread_mutex_unlock(&server->housekeeper_lock);
     return NULL;
 }
 
@@ -168,10 +151,7 @@ static void housekeeper_stop(struct http_server *server)
 {
     if (!server->housekeeper_runs)
         return;
-    (void)pthread_mutex_lock(&server->housekeeper_lock);
-    server->housekeeper_ends = true;
-    (void)pthread_cond_signal(&server->housekeeper_wake);
-    (void)pthread_mutex_unlock(&server->housekeeper_lock);
+    http_connections_wake_for_end(&server->connections);
     (void)pthread_join(server->housekeeper, NULL);
     server->housekeeper_runs = false;
 }
@@ -191,6 +171,12 @@ static void connection_changed(void *context, struct MHD_Connection *connection,
 {
     struct http_server *server = context;
     if (what == MHD_CONNECTION_NOTIFY_CLOSED) {
+        struct http_connection *line = *place;
+        /* The library forgets to end a request whose address leaves it no memory. */
+        if (line != NULL && line->exchange != NULL) {
+            line->exchange->method = NULL; /* its text has gone already */
+            http_pipeline_finish(line->exchange, true);
+        }
         http_connection_closed(&server->connections, *place, base_clock_monotonic_s());
         *place = NULL;
         return;
@@ -243,7 +229,6 @@ static struct http_server *server_new(const struct http_options *options)
     struct http_server *server = calloc(1, sizeof *server);
     if (server == NULL)
         return NULL;
-    pthread_condattr_t monotonic;
     atomic_store(&server->holders, 1);
     server->listen_fd = -1;
     server->log = options->log;
@@ -251,11 +236,6 @@ static struct http_server *server_new(const struct http_options *options)
     server->timeout_s = options->timeout_s;
     server->body_bytes_max = BODY_BYTES_LEAST + 2 * largest_body(options->routes);
     randombytes_buf(server->id_key, sizeof server->id_key);
-    (void)pthread_mutex_init(&server->housekeeper_lock, NULL);
-    (void)pthread_condattr_init(&monotonic);
-    (void)pthread_condattr_setclock(&monotonic, CLOCK_MONOTONIC);
-    (void)pthread_cond_init(&server->housekeeper_wake, &monotonic);
-    (void)pthread_condattr_destroy(&monotonic);
     http_connections_begin(&server->connections);
     http_request_log_begin(&server->request_log, options->log);
     return server;
@@ -303,8 +283,6 @@ void http_server_drop(struct http_server *server)
         MHD_destroy_response(server->when_failed);
     if (server->when_stopping != NULL)
         MHD_destroy_response(server->when_stopping);
-    (void)pthread_cond_destroy(&server->housekeeper_wake);
-    (void)pthread_mutex_destroy(&server->housekeeper_lock);
     free(server->tls_cert);
     free(server->tls_key);
     free(server->cookie_name);

@@ -43,9 +43,6 @@ struct http_server {
     atomic_bool stopping;
     pthread_t housekeeper;
     bool housekeeper_runs;
-    pthread_mutex_t housekeeper_lock; /* guards housekeeper_ends */
-    pthread_cond_t housekeeper_wake;
-    bool housekeeper_ends;
 };
 
 /* Frees what http_start made, when the last hold is given up. */
@@ -56,6 +53,8 @@ void *http_pipeline_begin(void *server, const char *address, struct MHD_Connecti
 enum MHD_Result http_pipeline_step(void *server, struct MHD_Connection *connection,
                                    const char *address, const char *method, const char *version,
                                    const char *data, size_t *size, void **exchange);
+/* The request is over; `cut` when its client did not get the whole answer. */
+void http_pipeline_finish(struct http_exchange *exchange, bool cut);
 void http_pipeline_end(void *server, struct MHD_Connection *connection, void **exchange,
                        enum MHD_RequestTerminationCode how);
 

@@ -88,6 +88,10 @@ enum http_result http_answer_stream(struct http_exchange *exchange, unsigned sta
         response = MHD_create_response_from_callback(MHD_SIZE_UNKNOWN, BUFFER_SIZE, read_stream,
                                                      stream, end_stream);
     }
+    /* The library would send the last chunk of a body even to HEAD, which has none; without chunks
+     * it does not, and then the connection must end. */
+    if (response != NULL && exchange->is_head)
+        (void)MHD_set_response_options(response, MHD_RF_HTTP_1_0_COMPATIBLE_STRICT, MHD_RO_END);
     if (response == NULL) {
         if (done != NULL)
             done(state);
