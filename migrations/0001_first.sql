@@ -53,8 +53,10 @@ CREATE TABLE batch (
     files_loaded INTEGER NOT NULL DEFAULT 0,
     files_repeated INTEGER NOT NULL DEFAULT 0,
     files_refused INTEGER NOT NULL DEFAULT 0,
+    stars INTEGER NOT NULL DEFAULT 0,
     light_curves INTEGER NOT NULL DEFAULT 0,
     segments INTEGER NOT NULL DEFAULT 0,
+    settled INTEGER NOT NULL DEFAULT 0, -- of the segments
     points INTEGER NOT NULL DEFAULT 0
 ) STRICT;
 
@@ -68,7 +70,8 @@ CREATE TABLE file (
     bytes INTEGER NOT NULL,
     UNIQUE (batch, label)
 ) STRICT;
-CREATE INDEX file_sha256 ON file (sha256) WHERE outcome = 1;
+-- The same bytes are loaded once.
+CREATE UNIQUE INDEX file_sha256 ON file (sha256) WHERE outcome = 1;
 
 CREATE TABLE star (
     id INTEGER PRIMARY KEY AUTOINCREMENT,
@@ -78,8 +81,7 @@ CREATE TABLE star (
     magnitude REAL,
     temperature_k REAL,
     radius_rsun REAL,
-    mass_msun REAL,
-    reviews INTEGER NOT NULL DEFAULT 0
+    mass_msun REAL
 ) STRICT;
 
 CREATE TABLE light_curve (
@@ -124,8 +126,10 @@ CREATE TABLE segment (
 ) STRICT;
 CREATE INDEX segment_light_curve ON segment (light_curve);
 
+-- Ids of reviews and marks have no holes, because none is ever deleted: the newest id is how many
+-- there are.
 CREATE TABLE review (
-    id INTEGER PRIMARY KEY AUTOINCREMENT,
+    id INTEGER PRIMARY KEY,
     person INTEGER NOT NULL REFERENCES person (id),
     segment INTEGER NOT NULL REFERENCES segment (id),
     key TEXT NOT NULL,
@@ -140,7 +144,7 @@ CREATE TABLE review (
 CREATE INDEX review_segment ON review (segment);
 
 CREATE TABLE mark (
-    id INTEGER PRIMARY KEY AUTOINCREMENT,
+    id INTEGER PRIMARY KEY,
     review INTEGER NOT NULL REFERENCES review (id),
     starts REAL NOT NULL,
     ends REAL NOT NULL,
@@ -170,8 +174,11 @@ BEGIN
     SELECT RAISE(ABORT, 'a mark is never changed');
 END;
 
+-- A run is written in pieces and counts only once it is whole. The number of one that was never
+-- finished is given again.
 CREATE TABLE consensus_run (
-    id INTEGER PRIMARY KEY AUTOINCREMENT,
+    id INTEGER PRIMARY KEY,
+    whole INTEGER NOT NULL DEFAULT 0 CHECK (whole IN (0, 1)),
     newest_review INTEGER NOT NULL,
     reviews INTEGER NOT NULL,
     people INTEGER NOT NULL,
@@ -219,14 +226,16 @@ CREATE TABLE candidate (
     flags INTEGER NOT NULL,
     PRIMARY KEY (run, id)
 ) STRICT, WITHOUT ROWID;
+-- One for each order of the list. The probability at the end lets a least one be asked for without
+-- reading the candidate itself.
 CREATE INDEX candidate_probability ON candidate (run, probability, id);
-CREATE INDEX candidate_snr ON candidate (run, snr, id);
-CREATE INDEX candidate_depth ON candidate (run, depth_ppm, id);
-CREATE INDEX candidate_duration ON candidate (run, duration_h, id);
-CREATE INDEX candidate_star ON candidate (run, star, id);
-CREATE INDEX candidate_looks ON candidate (run, looks, id);
-CREATE INDEX candidate_marks ON candidate (run, marks, id);
-CREATE INDEX candidate_mid ON candidate (run, mid, id);
+CREATE INDEX candidate_snr ON candidate (run, snr, id, probability);
+CREATE INDEX candidate_depth ON candidate (run, depth_ppm, id, probability);
+CREATE INDEX candidate_duration ON candidate (run, duration_h, id, probability);
+CREATE INDEX candidate_star ON candidate (run, star, id, probability);
+CREATE INDEX candidate_mid ON candidate (run, mid, id, probability);
+CREATE INDEX candidate_looks ON candidate (run, looks, id, probability);
+CREATE INDEX candidate_marks ON candidate (run, marks, id, probability);
 
 CREATE TABLE member (
     run INTEGER NOT NULL REFERENCES consensus_run (id),

@@ -34,14 +34,16 @@ struct store;
 struct store_options {
     unsigned readers;         /* reading connections, default 4 */
     bool must_exist;          /* do not create */
-    bool migrate_only_if_new; /* serve and load migrate at once; `migrate` reports */
+    bool migrate_only_if_new; /* refuse (BASE_CONFLICT) an older database instead of migrating it */
 };
 
 /* Open or create the database: take the lock (FILE.lock, flock; held until close), check that it is
  * a database of ours, back it up (verified: integrity check and row counts; FILE.before-NNNN)
  * before each migration, migrate. BASE_CONFLICT: another process has it (the sentence says so, with
- * its process id). BASE_INVALID: it is not an Ebbmark database, or it is newer than this program.
- * BASE_NOT_FOUND with must_exist. The caller closes it. */
+ * its process id). BASE_INVALID: it is not an Ebbmark database, or it is newer than this program;
+ * then it is not touched. BASE_CORRUPT: it is ours and damaged. BASE_NOT_FOUND with must_exist. The
+ * caller closes it, when no verb runs any more. A verb called from a visitor takes a reader of its
+ * own, so `readers` must leave room for that. */
 bool store_open(const char *path, const struct store_options *options, struct store **out,
                 struct base_error *error);
 void store_close(struct store *store);
@@ -415,7 +417,9 @@ struct store_run_new {
     const struct store_skill *skills;
     size_t skill_count;
 };
-/* Store a whole run and make it the current one, in one transaction. */
+/* Store a whole run and make it the current one. It is written in pieces, between which others may
+ * write, and is seen by nobody until the last transaction has made it count; one that was cut short
+ * is never seen, and its number is given again. */
 bool store_run_add(struct store *store, struct store_run_new *run, struct base_error *error);
 /* The current run's number, 0 when there is none. */
 bool store_run_current(struct store *store, int64_t *run, struct base_error *error);
@@ -443,7 +447,8 @@ struct store_candidate_query {
     int64_t offset; /* rows to pass over */
     size_t limit;   /* 0: no limit */
 };
-/* Order is total: ties are broken by candidate id. The rows live as long as the arena. `total` (may
+/* Order is total: ties are broken by candidate id, in the same direction; what was not measured
+ * comes last in both. The rows live as long as the arena. `total` (may
  * be NULL) is how many match in all. */
 bool store_candidates_find(struct store *store, struct base_arena *arena,
                            const struct store_candidate_query *query, struct store_candidate **out,
@@ -489,8 +494,18 @@ struct store_counts {
 bool store_count(struct store *store, struct store_counts *out, struct base_error *error);
 
 /* Copy the open database to a new file, online, and verify the copy (integrity check, row counts of
- * every table). BASE_CONFLICT when the file exists. */
+ * every table). It appears whole or not at all. BASE_CONFLICT when the file exists. */
 bool store_backup(struct store *store, const char *path, struct base_error *error);
+
+/* Is this file, which nobody has open, a sound database of ours that this program can read? Changes
+ * nothing. BASE_INVALID: it is not ours, or newer. BASE_CORRUPT: it is damaged. */
+bool store_backup_check(const char *path, int *version, struct base_error *error);
+
+/* Put a backup in the place of a database that no process has open (BASE_CONFLICT otherwise): the
+ * copy is verified first; then a database that is there already, damaged or not, is kept as
+ * FILE.replaced-<now_ms> (*replaced). Opening it migrates it. */
+bool store_restore(const char *backup, const char *path, int64_t now_ms, bool *replaced,
+                   struct base_error *error);
 
 /* Can the store write now? A cheap check for readyz: the disk has room, the lock is held. */
 bool store_ready(struct store *store, struct base_error *error);

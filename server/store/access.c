@@ -5,7 +5,7 @@ bool store_access_add(struct store *store, enum store_access kind,
                       enum store_role role, int64_t now_ms, int64_t ends_ms,
                       struct base_error *error)
 {
-    return db_change(store, error,
+    return db_change(store, NULL, error,
                      "INSERT INTO access (hash, kind, person, role, made_ms, ends_ms)"
                      " VALUES (?, ?, ?, ?, ?, ?)",
                      "biiiii", hash, (size_t)STORE_HASH_SIZE, (int64_t)kind, person, (int64_t)role,
@@ -39,11 +39,11 @@ bool store_access_find(struct store *store, enum store_access kind,
 bool store_access_end(struct store *store, enum store_access kind,
                       const unsigned char hash[STORE_HASH_SIZE], struct base_error *error)
 {
-    return db_change(store, error, "DELETE FROM access WHERE hash = ? AND kind = ?", "bi", hash,
-                     (size_t)STORE_HASH_SIZE, (int64_t)kind);
+    return db_change(store, NULL, error, "DELETE FROM access WHERE hash = ? AND kind = ?", "bi",
+                     hash, (size_t)STORE_HASH_SIZE, (int64_t)kind);
 }
 
 bool store_access_purge(struct store *store, int64_t now_ms, struct base_error *error)
 {
-    return db_change(store, error, "DELETE FROM access WHERE ends_ms <= ?", "i", now_ms);
+    return db_change(store, NULL, error, "DELETE FROM access WHERE ends_ms <= ?", "i", now_ms);
 }

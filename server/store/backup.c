@@ -1,89 +1,90 @@
+/* Backups: made, checked, put back. */
+#include <errno.h>
+#include <inttypes.h>
+#include <limits.h>
 #include <stdio.h>
-#include <string.h>
+#include <stdlib.h>
 #include <sys/stat.h>
 #include <unistd.h>
 
+#include "copy.h"
+#include "header.h"
 #include "migrate.h"
-
-/* Names of all tables, then for each the same count on both sides. */
-static bool counts_agree(struct db *from, struct db *to, struct base_error *error)
-{
-    sqlite3_stmt *names = NULL;
-    bool ok =
-        sqlite3_prepare_v2(from->handle,
-                           "SELECT format('SELECT count(*) FROM \"%w\"', name) FROM sqlite_schema "
-                           "WHERE type = 'table' AND name NOT LIKE 'sqlite_%'",
-                           -1, &names, NULL) == SQLITE_OK ||
-        db_fail(from, "Reading the table names", error);
-    while (ok && sqlite3_step(names) == SQLITE_ROW) {
-        sqlite3_stmt *one = NULL, *other = NULL;
-        const char *sql = (const char *)sqlite3_column_text(names, 0);
-        ok = sqlite3_prepare_v2(from->handle, sql, -1, &one, NULL) == SQLITE_OK &&
-             sqlite3_prepare_v2(to->handle, sql, -1, &other, NULL) == SQLITE_OK &&
-             sqlite3_step(one) == SQLITE_ROW && sqlite3_step(other) == SQLITE_ROW &&
-             sqlite3_column_int64(one, 0) == sqlite3_column_int64(other, 0);
-        if (!ok)
-            (void)base_fail(
-                error, BASE_CORRUPT,
-                "The copy of the database does not hold the same rows; it is not kept.");
-        (void)sqlite3_finalize(other);
-        (void)sqlite3_finalize(one);
-    }
-    (void)sqlite3_finalize(names);
-    return ok;
-}
-
-static bool is_sound(struct db *db, struct base_error *error)
-{
-    sqlite3_stmt *row = db_bind(db, "PRAGMA integrity_check", error, "");
-    if (row == NULL)
-        return false;
-    int got = db_next(db, row, error);
-    bool ok = got == 1 && strcmp((const char *)sqlite3_column_text(row, 0), "ok") == 0;
-    if (got == 1 && !ok)
-        (void)base_fail(error, BASE_CORRUPT, "The copy of the database is damaged: %s.",
-                        (const char *)sqlite3_column_text(row, 0));
-    db_done(row);
-    return ok;
-}
-
-static bool copy_pages(struct db *from, struct db *to, struct base_error *error)
-{
-    sqlite3_backup *backup = sqlite3_backup_init(to->handle, "main", from->handle, "main");
-    if (backup == NULL)
-        return db_fail(to, "Starting the backup", error);
-    int code;
-    do {
-        code = sqlite3_backup_step(backup, 1024);
-        if (code == SQLITE_BUSY || code == SQLITE_LOCKED)
-            (void)sqlite3_sleep(20);
-    } while (code == SQLITE_OK || code == SQLITE_BUSY || code == SQLITE_LOCKED);
-    (void)sqlite3_backup_finish(backup);
-    return code == SQLITE_DONE || db_fail(to, "Writing the backup", error);
-}
-
-bool copy_verified(struct store *store, const char *path, struct base_error *error)
-{
-    struct stat status;
-    if (stat(path, &status) == 0)
-        return base_fail(error, BASE_CONFLICT, "%s is there already and is not overwritten.", path);
-    /* A connection of its own, held in a read transaction, so that both sides are the same moment.
-     */
-    struct db from, to = {0};
-    if (!db_open(&from, store->path, true, error))
-        return false;
-    bool ok = db_open(&to, path, false, error) &&
-              db_script(&from, "BEGIN; SELECT count(*) FROM sqlite_schema", error) &&
-              copy_pages(&from, &to, error) && is_sound(&to, error) &&
-              counts_agree(&from, &to, error);
-    db_close(&to);
-    db_close(&from);
-    if (!ok)
-        (void)unlink(path);
-    return ok;
-}
 
 bool store_backup(struct store *store, const char *path, struct base_error *error)
 {
-    return copy_verified(store, path, error);
+    return copy_verified(store->path, path, COPY_IS_NEW, error);
+}
+
+bool store_backup_check(const char *path, int *version, struct base_error *error)
+{
+    enum header_kind kind;
+    struct stat status;
+    *version = 0;
+    if (stat(path, &status) != 0)
+        return base_fail_errno(error, errno, "Looking at the backup %s", path);
+    if (!header_read(path, &kind, error))
+        return false;
+    if (kind == HEADER_NEW)
+        return base_fail(error, BASE_INVALID, "%s is empty: there is nothing to put back.", path);
+    struct db db = {0};
+    bool ok = db_open(&db, path, DB_READS, error) && migrate_identify(&db, path, version, error) &&
+              copy_is_sound(&db, path, error);
+    db_close(&db);
+    return ok;
+}
+
+/* Rename FILE to FILE<mark>, and what SQLite keeps beside it likewise, so that they stay together.
+ * *moved: there was something. */
+static bool move_aside(const char *path, const char *mark, bool *moved, struct base_error *error)
+{
+    static const char *const parts[] = {"", "-wal", "-shm"};
+    *moved = false;
+    for (size_t i = 0; i < sizeof parts / sizeof parts[0]; i++) {
+        char from[PATH_MAX], to[PATH_MAX];
+        int one = snprintf(from, sizeof from, "%s%s", path, parts[i]);
+        int other = snprintf(to, sizeof to, "%s%s%s", path, mark, parts[i]);
+        if (one < 0 || other < 0 || (size_t)one >= sizeof from || (size_t)other >= sizeof to)
+            return base_fail(error, BASE_INVALID, "The path of the database is too long.");
+        if (rename(from, to) == 0)
+            *moved = true;
+        else if (errno != ENOENT)
+            return base_fail_errno(error, errno, "Moving %s aside", from);
+    }
+    return true;
+}
+
+/* With the lock held: the verified copy stands ready before the old database is moved. */
+static bool put_back(const char *backup, const char *path, int64_t now_ms, bool *replaced,
+                     struct base_error *error)
+{
+    char ready[PATH_MAX], mark[48];
+    (void)snprintf(mark, sizeof mark, ".replaced-%" PRId64, now_ms);
+    int wrote = snprintf(ready, sizeof ready, "%s.restored", path);
+    if (wrote < 0 || (size_t)wrote >= sizeof ready)
+        return base_fail(error, BASE_INVALID, "The path of the database is too long.");
+    if (!copy_verified(backup, ready, COPY_REPLACES, error) ||
+        !move_aside(path, mark, replaced, error))
+        return false;
+    if (rename(ready, path) != 0)
+        return base_fail_errno(error, errno, "Naming the restored database %s", path);
+    return copy_sync_folder(path, error);
+}
+
+bool store_restore(const char *backup, const char *path, int64_t now_ms, bool *replaced,
+                   struct base_error *error)
+{
+    struct lock lock;
+    int version;
+    *replaced = false;
+    char *resolved = realpath(path, NULL);
+    const char *database = resolved != NULL ? resolved : path;
+    bool ok = lock_take(database, &lock, error);
+    if (ok) {
+        ok = store_backup_check(backup, &version, error) &&
+             put_back(backup, database, now_ms, replaced, error);
+        lock_end(database, &lock, !ok && lock.made);
+    }
+    free(resolved);
+    return ok;
 }

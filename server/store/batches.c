@@ -1,5 +1,3 @@
-#include <inttypes.h>
-
 #include "db.h"
 
 bool store_batch_begin(struct store *store, const char *name, const char *source, int64_t now_ms,
@@ -30,24 +28,19 @@ bool store_batch_begin(struct store *store, const char *name, const char *source
 
 bool store_batch_finish(struct store *store, int64_t id, int64_t now_ms, struct base_error *error)
 {
-    return db_change(store, error,
-                     "UPDATE batch SET state = 2, finished_ms = ? WHERE id = ? AND state = 1", "ii",
-                     now_ms, id);
+    /* One that was withdrawn while it was loaded stays withdrawn. */
+    return db_change(store, "There is no such batch.", error,
+                     "UPDATE batch SET state = iif(state = 1, 2, state),"
+                     " finished_ms = iif(finished_ms = 0, ?, finished_ms) WHERE id = ?",
+                     "ii", now_ms, id);
 }
 
 bool store_batch_withdraw(struct store *store, int64_t id, int64_t now_ms, struct base_error *error)
 {
-    struct db *db = db_write(store, error);
-    if (db == NULL)
-        return false;
-    bool ok =
-        db_run(db, error,
-               "UPDATE batch SET state = 3, finished_ms = iif(finished_ms = 0, ?, finished_ms)"
-               " WHERE id = ?",
-               "ii", now_ms, id);
-    if (ok && sqlite3_changes(db->handle) == 0)
-        ok = base_fail(error, BASE_NOT_FOUND, "There is no batch %" PRId64 ".", id);
-    return db_write_end(store, ok, error);
+    return db_change(store, "There is no such batch.", error,
+                     "UPDATE batch SET state = 3,"
+                     " finished_ms = iif(finished_ms = 0, ?, finished_ms) WHERE id = ?",
+                     "ii", now_ms, id);
 }
 
 static bool fill_batch(sqlite3_stmt *row, struct base_arena *arena, void *item)
@@ -73,7 +66,7 @@ bool store_batches_list(struct store *store, struct base_arena *arena, struct st
 {
     return db_rows(store, arena, sizeof **out, fill_batch, out, count, error,
                    "SELECT id, name, source, state, begun_ms, finished_ms, files_loaded,"
-                   " files_repeated, files_refused, light_curves, segments, points"
+                   " files_repeated, files_refused, stars, segments, points"
                    " FROM batch ORDER BY id",
                    "");
 }

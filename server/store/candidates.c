@@ -1,10 +1,12 @@
 #include <assert.h>
 #include <math.h>
-#include <stdio.h>
-#include <string.h>
 
-#include "db.h"
+#include "rows.h"
+#include "runs.h"
 
+#define LATEST                                                                                     \
+    "ifnull((SELECT v.verdict FROM verdict v WHERE v.candidate = c.id ORDER BY v.id DESC"          \
+    " LIMIT 1), '') "
 #define COLUMNS                                                                                    \
     "SELECT c.id, c.run, c.star, c.light_curve, s.name, l.time_reference, b.name, s.ra_deg,"       \
     " s.dec_deg, c.starts, c.ends, c.mid, c.mid_error, c.probability, c.log_odds,"                 \
@@ -12,9 +14,7 @@
     " c.marks, c.snr, c.depth_ppm, c.depth_error_ppm, c.duration_h, c.duration_error_h,"           \
     " c.ingress_fraction, c.covered, c.gap_distance, c.asymmetry, c.spread_starts,"                \
     " c.spread_ends, c.period, c.period_error, c.epoch, c.transits, c.other_stars, c.flags,"       \
-    " ifnull((SELECT v.verdict FROM verdict v WHERE v.candidate = c.id ORDER BY v.id DESC"         \
-    " LIMIT 1), '') AS latest "
-#define FROM                                                                                       \
+    " " LATEST                                                                                     \
     "FROM candidate c JOIN star s ON s.id = c.star JOIN light_curve l ON l.id = c.light_curve"     \
     " JOIN batch b ON b.id = l.batch "
 
@@ -65,35 +65,119 @@ static bool fill_candidate(sqlite3_stmt *row, struct base_arena *arena, void *it
            c->verdict != NULL;
 }
 
-/* The filters, each off when its value is empty. ?1 run, ?2 least probability, ?3 star, ?4 batch,
- * ?5 verdict. */
-#define WHERE                                                                                      \
-    "WHERE c.run = ?1 AND c.probability >= ?2 AND (?3 = '' OR s.name = ?3)"                        \
-    " AND (?4 = '' OR b.name = ?4) AND (?5 = '' OR iif(?5 = 'none', '', ?5) ="                     \
-    " ifnull((SELECT v.verdict FROM verdict v WHERE v.candidate = c.id ORDER BY v.id DESC"         \
-    " LIMIT 1), '')) "
+/*
+ * The list is found in two steps: ids in order, from one index alone where that is possible, then
+ * the rows of one page. ?1 run, ?2 least probability, ?3 batch, ?4 verdict, ?5 star, ?6 limit, ?7
+ * offset.
+ */
+#define BY_RUN "FROM candidate c WHERE c.run = ?1 AND "
+#define BY_NAME "FROM star s CROSS JOIN candidate c ON c.run = ?1 AND c.star = s.id WHERE "
+#define LEAST "c.probability >= ?2 "
+/* + keeps the planner from taking the index of probabilities where another is in order already. */
+#define LEAST_ASIDE "+c.probability >= ?2 "
+#define VERDICT "AND (?4 = '' OR iif(?4 = 'none', '', ?4) = " LATEST ") "
+#define IN_BATCH                                                                                   \
+    "AND (?3 = 0 OR EXISTS (SELECT 1 FROM light_curve l WHERE l.id = c.light_curve"                \
+    " AND l.batch = ?3)) "
+#define OF_STAR "AND c.star = ?5 "
 
-/* One constant question an order and direction: a column's name cannot be a bound value. NULLs come
- * last either way. */
-#define ORDERED(column)                                                                            \
+/* What narrows the list decides which question is put. */
+enum narrowed { BY_NOTHING, BY_VERDICT, BY_BATCH, BY_STAR, NARROWED_COUNT };
+
+/* Ties stand in the direction of the order, so that an index can be walked either way; what was not
+ * measured comes last in both. */
+#define DIRECTED(from, column, where)                                                              \
     {                                                                                              \
-        COLUMNS FROM WHERE "ORDER BY " column " DESC NULLS LAST, c.id LIMIT ?6 OFFSET ?7",         \
-            COLUMNS FROM WHERE "ORDER BY " column " ASC NULLS LAST, c.id LIMIT ?6 OFFSET ?7"       \
+        "SELECT c.id " from where "ORDER BY " column " DESC NULLS LAST, c.id DESC"                 \
+        " LIMIT ?6 OFFSET ?7",                                                                     \
+            "SELECT c.id " from where "ORDER BY " column " ASC NULLS LAST, c.id ASC"               \
+            " LIMIT ?6 OFFSET ?7"                                                                  \
     }
-static const char *const ordered[][2] = {[STORE_BY_PROBABILITY] = ORDERED("c.probability"),
-                                         [STORE_BY_SNR] = ORDERED("c.snr"),
-                                         [STORE_BY_DEPTH] = ORDERED("c.depth_ppm"),
-                                         [STORE_BY_DURATION] = ORDERED("c.duration_h"),
-                                         [STORE_BY_STAR] = ORDERED("s.name"),
-                                         [STORE_BY_TIME] = ORDERED("c.mid"),
-                                         [STORE_BY_LOOKS] = ORDERED("c.looks"),
-                                         [STORE_BY_MARKS] = ORDERED("c.marks")};
+#define ORDERED(from, column, least)                                                               \
+    {                                                                                              \
+        DIRECTED(from, column, least), DIRECTED(from, column, least VERDICT),                      \
+            DIRECTED(from, column, least IN_BATCH VERDICT),                                        \
+            DIRECTED(from, column, LEAST_ASIDE IN_BATCH VERDICT OF_STAR)                           \
+    }
+/* A column's name cannot be a bound value, hence one constant question for each. */
+static const char *const ordered[][NARROWED_COUNT][2] = {
+    [STORE_BY_PROBABILITY] = ORDERED(BY_RUN, "c.probability", LEAST),
+    [STORE_BY_SNR] = ORDERED(BY_RUN, "c.snr", LEAST_ASIDE),
+    [STORE_BY_DEPTH] = ORDERED(BY_RUN, "c.depth_ppm", LEAST_ASIDE),
+    [STORE_BY_DURATION] = ORDERED(BY_RUN, "c.duration_h", LEAST_ASIDE),
+    [STORE_BY_STAR] = ORDERED(BY_NAME, "s.name", LEAST_ASIDE),
+    [STORE_BY_TIME] = ORDERED(BY_RUN, "c.mid", LEAST_ASIDE),
+    [STORE_BY_LOOKS] = ORDERED(BY_RUN, "c.looks", LEAST_ASIDE),
+    [STORE_BY_MARKS] = ORDERED(BY_RUN, "c.marks", LEAST_ASIDE)};
+static const struct {
+    const char *sql, *kinds; /* the values up to the last that the question takes */
+} counted[NARROWED_COUNT] = {
+    [BY_NOTHING] = {"SELECT count(*) " BY_RUN LEAST, "ir"},
+    [BY_VERDICT] = {"SELECT count(*) " BY_RUN LEAST VERDICT, "irit"},
+    [BY_BATCH] = {"SELECT count(*) " BY_RUN LEAST IN_BATCH VERDICT, "irit"},
+    [BY_STAR] = {"SELECT count(*) " BY_RUN LEAST_ASIDE IN_BATCH VERDICT OF_STAR, "iriti"}};
 
-static bool fill_count(sqlite3_stmt *row, struct base_arena *arena, void *item)
+/* The query with names turned into ids. */
+struct narrowing {
+    enum narrowed by;
+    bool empty; /* nothing can match */
+    int64_t run, batch, star;
+};
+
+/* The id of what bears this name, 0 when nothing does. */
+static bool id_of(struct store *store, const char *sql, const char *name, int64_t *id,
+                  struct base_error *error)
 {
-    (void)arena;
-    *(int64_t *)item = sqlite3_column_int64(row, 0);
+    struct db *db = db_read(store);
+    sqlite3_stmt *row = db_bind(db, sql, error, "t", name);
+    int got = row != NULL ? db_next(db, row, error) : -1;
+    *id = got == 1 ? sqlite3_column_int64(row, 0) : 0;
+    db_done(row);
+    db_read_end(store, db);
+    return got >= 0;
+}
+
+static bool narrow(struct store *store, const struct store_candidate_query *query,
+                   struct narrowing *out, struct base_error *error)
+{
+    *out = (struct narrowing){0};
+    if (!runs_resolve(store, query->run, &out->run, error) ||
+        (query->batch[0] != '\0' &&
+         !id_of(store, "SELECT id FROM batch WHERE name = ?", query->batch, &out->batch, error)) ||
+        (query->star[0] != '\0' &&
+         !id_of(store, "SELECT id FROM star WHERE name = ?", query->star, &out->star, error)))
+        return false;
+    out->empty = out->run == 0 || (query->batch[0] != '\0' && out->batch == 0) ||
+                 (query->star[0] != '\0' && out->star == 0);
+    out->by = out->star != 0              ? BY_STAR
+              : out->batch != 0           ? BY_BATCH
+              : query->verdict[0] != '\0' ? BY_VERDICT
+                                          : BY_NOTHING;
     return true;
+}
+
+static bool read_each(struct store *store, struct base_arena *arena, int64_t run,
+                      const int64_t *ids, size_t count, struct store_candidate **out,
+                      struct base_error *error)
+{
+    *out = base_arena_take_array(arena, count, sizeof **out);
+    if (*out == NULL && count > 0)
+        return db_no_memory(error);
+    struct db *db = db_read(store);
+    bool ok = true;
+    for (size_t i = 0; ok && i < count; i++) {
+        sqlite3_stmt *row =
+            db_bind(db, COLUMNS "WHERE c.run = ? AND c.id = ?", error, "ii", run, ids[i]);
+        int got = row != NULL ? db_next(db, row, error) : -1;
+        ok = got == 1 && (fill_candidate(row, arena, &(*out)[i]) || db_no_memory(error));
+        if (got == 0)
+            (void)base_fail(error, BASE_CORRUPT,
+                            "A candidate's star, light curve or batch is missing; restore the "
+                            "newest backup.");
+        db_done(row);
+    }
+    db_read_end(store, db);
+    return ok;
 }
 
 bool store_candidates_find(struct store *store, struct base_arena *arena,
@@ -101,30 +185,36 @@ bool store_candidates_find(struct store *store, struct base_arena *arena,
                            size_t *count, int64_t *total, struct base_error *error)
 {
     assert((size_t)query->order < sizeof ordered / sizeof ordered[0]);
-    int64_t run = query->run;
+    struct narrowing to;
     *out = NULL;
     *count = 0;
-    if (run == 0 && !store_run_current(store, &run, error))
+    if (total != NULL)
+        *total = 0;
+    if (!narrow(store, query, &to, error))
         return false;
-    const char *sql = ordered[query->order][query->ascending ? 1 : 0];
-    int64_t limit = query->limit > 0 ? (int64_t)query->limit : -1;
-    bool ok = db_rows(store, arena, sizeof **out, fill_candidate, out, count, error, sql, "irtttii",
-                      run, query->min_probability, query->star, query->batch, query->verdict, limit,
-                      query->offset);
+    if (to.empty)
+        return true;
+    int64_t *ids = NULL;
+    int64_t limit =
+        query->limit == 0 || query->limit > INT64_MAX ? INT64_MAX : (int64_t)query->limit;
+    bool ok =
+        db_rows(store, arena, sizeof *ids, rows_fill_id, &ids, count, error,
+                ordered[query->order][to.by][query->ascending ? 1 : 0], "iritiii", to.run,
+                query->min_probability, to.batch, query->verdict, to.star, limit, query->offset) &&
+        read_each(store, arena, to.run, ids, *count, out, error);
     if (ok && total != NULL)
-        ok =
-            db_row(store, NULL, fill_count, total, "", error, "SELECT count(*) " FROM WHERE,
-                   "irttt", run, query->min_probability, query->star, query->batch, query->verdict);
+        ok = db_row(store, NULL, rows_fill_id, total, "", error, counted[to.by].sql,
+                    counted[to.by].kinds, to.run, query->min_probability, to.batch, query->verdict,
+                    to.star);
     return ok;
 }
 
 bool store_candidate_read(struct store *store, struct base_arena *arena, int64_t run,
                           int64_t candidate, struct store_candidate *out, struct base_error *error)
 {
-    if (run == 0 && !store_run_current(store, &run, error))
-        return false;
-    return db_row(store, arena, fill_candidate, out, "This run has no such candidate.", error,
-                  COLUMNS FROM "WHERE c.run = ? AND c.id = ?", "ii", run, candidate);
+    return runs_resolve(store, run, &run, error) &&
+           db_row(store, arena, fill_candidate, out, "This run has no such candidate.", error,
+                  COLUMNS "WHERE c.run = ? AND c.id = ?", "ii", run, candidate);
 }
 
 static bool fill_candidate_mark(sqlite3_stmt *row, struct base_arena *arena, void *item)
@@ -147,7 +237,7 @@ bool store_candidate_marks(struct store *store, struct base_arena *arena, int64_
                            int64_t candidate, struct store_candidate_mark **out, size_t *count,
                            struct base_error *error)
 {
-    if (run == 0 && !store_run_current(store, &run, error))
+    if (!runs_resolve(store, run, &run, error))
         return false;
     return db_rows(store, arena, sizeof **out, fill_candidate_mark, out, count, error,
                    "SELECT m.id, m.review, m.starts, m.ends, m.low, m.high, m.sure, r.person,"
@@ -163,9 +253,9 @@ bool store_person_candidates(struct store *store, struct base_arena *arena, int6
                              struct base_error *error)
 {
     int64_t run = 0;
-    return store_run_current(store, &run, error) &&
+    return runs_resolve(store, 0, &run, error) &&
            db_rows(store, arena, sizeof **out, fill_candidate, out, count, error,
-                   COLUMNS FROM
+                   COLUMNS
                    "WHERE c.run = ?1 AND c.id IN (SELECT e.candidate FROM review r"
                    " JOIN mark m ON m.review = r.id JOIN member e ON e.mark = m.id AND e.run = ?1"
                    " WHERE r.person = ?2) ORDER BY c.probability DESC, c.id LIMIT ?3",

@@ -11,12 +11,13 @@
 #include <sqlite3.h>
 
 #include "ebbmark/store.h"
+#include "lock.h"
 
-#define DB_STATEMENTS_MAX                                                                          \
-    256u /* slots of the cache, a power of two, well above the statements used */
+#define DB_STATEMENTS_MAX 512u /* slots of the cache, a power of two; half of them may be used */
 
 struct db {
     sqlite3 *handle;
+    size_t statement_count;
     struct db_slot {
         const char *sql;
         sqlite3_stmt *statement;
@@ -24,24 +25,29 @@ struct db {
 };
 
 struct store {
-    char *path;
-    int lock_fd;
-    int version;
-    struct db writer;
-    pthread_mutex_t writing; /* held by whoever uses writer */
-    pthread_mutex_t lock;    /* guards the fields below */
+    char *path; /* without symbolic links, where the file was there already */
+    struct lock lock_file;
+    bool foreign;           /* the file is not ours: leave nothing beside it */
+    int version;            /* set while opening, then constant */
+    struct db writer;       /* belongs to the thread whose turn it is */
+    struct db *readers;     /* reader_count of them; set while opening, then constant */
+    size_t reader_count;    /* those that are open */
+    pthread_mutex_t adding; /* held by the thread that stores a consensus run */
+    pthread_mutex_t lock;   /* guards the fields below */
+    pthread_cond_t turned;  /* `turn` moved on */
+    uint64_t tickets, turn; /* writers come in the order they asked, so that none starves */
     pthread_cond_t returned;
-    struct db *readers;
-    struct db **idle; /* idle_count of them */
-    size_t reader_count, idle_count;
+    struct db **idle; /* the readers that nobody uses, idle_count of them */
+    size_t idle_count;
 };
 
 /* Open one connection with the settings all connections share. */
-bool db_open(struct db *db, const char *path, bool read_only, struct base_error *error);
+enum db_use { DB_WRITES, DB_READS };
+bool db_open(struct db *db, const char *path, enum db_use use, struct base_error *error);
 void db_close(struct db *db);
 
 /* Fill error with what went wrong on this connection last; returns false. `doing` begins a
- * sentence. */
+ * sentence: "Reading the backup". */
 bool db_fail(struct db *db, const char *doing, struct base_error *error);
 
 /* Run SQL that gives no rows and takes no values, such as a whole migration. */
@@ -67,6 +73,10 @@ bool db_finish(struct db *db, sqlite3_stmt *statement, struct base_error *error)
 /* A reading connection; waits for one when all are busy. Give it back. */
 struct db *db_read(struct store *store);
 void db_read_end(struct store *store, struct db *db);
+
+/* Copy a blob that must have this size; BASE_CORRUPT when it has not. */
+bool db_blob(struct db *db, sqlite3_stmt *row, int column, void *out, size_t size,
+             struct base_error *error);
 
 /* The writing connection inside a transaction, to this thread alone; NULL on failure. db_write_end
  * commits when ok (and returns whether that worked) or takes everything back. Both must be paired.
@@ -99,11 +109,12 @@ bool db_row(struct store *store, struct base_arena *arena,
             bool (*fill)(sqlite3_stmt *row, struct base_arena *arena, void *item), void *item,
             const char *missing, struct base_error *error, const char *sql, const char *kinds, ...);
 
-/* Run one change in a transaction of its own. */
-bool db_change(struct store *store, struct base_error *error, const char *sql, const char *kinds,
-               ...);
+/* Run one change in a transaction of its own; BASE_NOT_FOUND with `missing`, unless that is NULL,
+ * when it touches no row. */
+bool db_change(struct store *store, const char *missing, struct base_error *error, const char *sql,
+               const char *kinds, ...);
 
-/* "No memory to <doing>." */
+/* BASE_MEMORY. */
 bool db_no_memory(struct base_error *error);
 
 #endif

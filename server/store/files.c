@@ -42,6 +42,16 @@ static int64_t star_put(struct db *db, const struct store_star_properties *star,
     return id;
 }
 
+/* Does the star have a light curve in this batch? 1, 0, or -1 on failure. */
+static int star_is_in_batch(struct db *db, int64_t star, int64_t batch, struct base_error *error)
+{
+    static const char sql[] = "SELECT 1 FROM light_curve WHERE star = ? AND batch = ? LIMIT 1";
+    sqlite3_stmt *row = db_bind(db, sql, error, "ii", star, batch);
+    int got = row != NULL ? db_next(db, row, error) : -1;
+    db_done(row);
+    return got;
+}
+
 static bool segments_put(struct db *db, int64_t light_curve,
                          const struct store_light_curve_new *curve, struct base_error *error)
 {
@@ -69,63 +79,97 @@ static bool curve_put(struct db *db, int64_t batch, int64_t file,
         "INSERT INTO light_curve (star, batch, file, time_reference, count, starts, ends,"
         " median_flux, cadence, noise_point, noise_1h, noise_3h, noise_6h, noise_13h)"
         " VALUES (?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?)";
-    int64_t star = star_put(db, &curve->star, error);
+    static const char points[] =
+        "INSERT INTO points (light_curve, has_error, checksum, packed) VALUES (?, ?, ?, ?)";
+    static const char totals[] =
+        "UPDATE batch SET stars = stars + ?, light_curves = light_curves + 1,"
+        " segments = segments + ?, points = points + ? WHERE id = ?";
     size_t n = curve->points.count;
-    if (star == 0 ||
+    const double *time = curve->points.time, *noise = curve->noise_window;
+    int64_t star = star_put(db, &curve->star, error);
+    int known = star != 0 ? star_is_in_batch(db, star, batch, error) : -1;
+    if (known < 0 ||
         !db_run(db, error, put, "iiitirrrrrrrrr", star, batch, file, curve->time_reference,
-                (int64_t)n, curve->points.time[0], curve->points.time[n - 1], curve->median_flux,
-                curve->cadence_d, curve->noise_point, curve->noise_window[0],
-                curve->noise_window[1], curve->noise_window[2], curve->noise_window[3]))
+                (int64_t)n, time[0], time[n - 1], curve->median_flux, curve->cadence_d,
+                curve->noise_point, noise[0], noise[1], noise[2], noise[3]))
         return false;
     int64_t id = sqlite3_last_insert_rowid(db->handle);
-    return db_run(db, error,
-                  "INSERT INTO points (light_curve, has_error, checksum, packed)"
-                  " VALUES (?, ?, ?, ?)",
-                  "iiib", id, (int64_t)(curve->points.error != NULL), (int64_t)blob->checksum,
-                  blob->data, blob->size) &&
+    return db_run(db, error, points, "iiib", id, (int64_t)(curve->points.error != NULL),
+                  (int64_t)blob->checksum, blob->data, blob->size) &&
            segments_put(db, id, curve, error) &&
-           db_run(db, error,
-                  "UPDATE batch SET light_curves = light_curves + 1, segments = segments + ?,"
-                  " points = points + ? WHERE id = ?",
-                  "iii", (int64_t)curve->segment_count, (int64_t)n, batch);
+           db_run(db, error, totals, "iiii", (int64_t)(known == 0), (int64_t)curve->segment_count,
+                  (int64_t)n, batch);
 }
 
-/* A file's row, which takes the place of a refused one of the same name. *fresh is false when a
- * loaded one of that name stands there already. */
-static bool file_put(struct db *db, const struct store_file_new *file, int64_t *id, bool *fresh,
+/* Move a batch's count of files of this outcome by one. */
+static bool count_file(struct db *db, int64_t batch, enum store_file_outcome outcome, int64_t by,
+                       struct base_error *error)
+{
+    static const char sql[] = "UPDATE batch SET files_loaded = files_loaded + iif(?1 = 1, ?2, 0),"
+                              " files_repeated = files_repeated + iif(?1 = 2, ?2, 0),"
+                              " files_refused = files_refused + iif(?1 = 3, ?2, 0) WHERE id = ?3";
+    return db_run(db, error, sql, "iii", (int64_t)outcome, by, batch);
+}
+
+/* Remove the row of this label, unless a file was loaded under it. */
+static bool forget_refused(struct db *db, const struct store_file_new *file,
+                           struct base_error *error)
+{
+    static const char sql[] = "DELETE FROM file WHERE batch = ? AND label = ? AND outcome <> 1"
+                              " RETURNING outcome";
+    sqlite3_stmt *row = db_bind(db, sql, error, "it", file->batch, file->label);
+    int got = row != NULL ? db_next(db, row, error) : -1;
+    enum store_file_outcome was =
+        got == 1 ? (enum store_file_outcome)sqlite3_column_int(row, 0) : STORE_FILE_UNKNOWN;
+    if (got == 1)
+        got = db_next(db, row, error);
+    db_done(row);
+    return got == 0 && (was == STORE_FILE_UNKNOWN || count_file(db, file->batch, was, -1, error));
+}
+
+static bool insert_file(struct db *db, const struct store_file_new *file,
+                        enum store_file_outcome outcome, const char *reason, bool *inserted,
+                        struct base_error *error)
+{
+    static const char put[] = "INSERT INTO file (batch, label, sha256, outcome, reason, bytes)"
+                              " VALUES (?, ?, ?, ?, ?, ?) ON CONFLICT DO NOTHING";
+    bool ok = db_run(db, error, put, "itbiti", file->batch, file->label, file->sha256,
+                     (size_t)STORE_HASH_SIZE, (int64_t)outcome, reason, file->bytes);
+    *inserted = ok && sqlite3_changes(db->handle) == 1;
+    return ok && (!*inserted || count_file(db, file->batch, outcome, 1, error));
+}
+
+/* Record a file's outcome. *id is 0 where its light curves are not to be stored: when it has none,
+ * when a file was loaded under this label before, or when the same bytes were (then it is recorded
+ * as repeated). */
+static bool file_put(struct db *db, const struct store_file_new *file, int64_t *id,
                      struct base_error *error)
 {
-    static const char forget[] = "DELETE FROM file WHERE batch = ? AND label = ? AND outcome <> 1";
-    static const char put[] = "INSERT INTO file (batch, label, sha256, outcome, reason, bytes)"
-                              " VALUES (?, ?, ?, ?, ?, ?) ON CONFLICT (batch, label) DO NOTHING";
-    if (!db_run(db, error, forget, "it", file->batch, file->label) ||
-        !db_run(db, error, put, "itbiti", file->batch, file->label, file->sha256,
-                (size_t)STORE_HASH_SIZE, (int64_t)file->outcome, file->reason, file->bytes))
+    bool inserted = false;
+    *id = 0;
+    if (!forget_refused(db, file, error) ||
+        !insert_file(db, file, file->outcome, file->reason, &inserted, error))
         return false;
-    *fresh = sqlite3_changes(db->handle) == 1;
-    *id = sqlite3_last_insert_rowid(db->handle);
-    return true;
+    if (file->outcome != STORE_FILE_LOADED)
+        return true;
+    if (inserted)
+        *id = sqlite3_last_insert_rowid(db->handle);
+    return inserted || insert_file(db, file, STORE_FILE_REPEATED,
+                                   "The same bytes were loaded before.", &inserted, error);
 }
 
 static bool files_put(struct db *db, const struct store_file_new *files, size_t count,
                       const struct points_blob *blobs, struct base_error *error)
 {
-    static const char totals[] =
-        "UPDATE batch SET"
-        " files_loaded = (SELECT count(*) FROM file f WHERE f.batch = batch.id AND outcome = 1),"
-        " files_repeated = (SELECT count(*) FROM file f WHERE f.batch = batch.id AND outcome = 2),"
-        " files_refused = (SELECT count(*) FROM file f WHERE f.batch = batch.id AND outcome = 3)"
-        " WHERE id = ?";
     bool ok = true;
     for (size_t i = 0; ok && i < count; i++) {
         int64_t id = 0;
-        bool fresh = false;
-        ok = file_put(db, &files[i], &id, &fresh, error);
-        for (size_t k = 0; ok && k < files[i].curve_count; k++)
-            ok = !fresh || curve_put(db, files[i].batch, id, &files[i].curves[k], &blobs[k], error);
+        ok = file_put(db, &files[i], &id, error);
+        for (size_t k = 0; ok && id != 0 && k < files[i].curve_count; k++)
+            ok = curve_put(db, files[i].batch, id, &files[i].curves[k], &blobs[k], error);
         blobs += files[i].curve_count;
     }
-    return ok && (count == 0 || db_run(db, error, totals, "i", files[0].batch));
+    return ok;
 }
 
 bool store_files_add(struct store *store, const struct store_file_new *files, size_t count,

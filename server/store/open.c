@@ -1,46 +1,20 @@
 /* Opening: the lock, the checks, the migrations, the connections. */
 #include <errno.h>
 #include <fcntl.h>
-#include <stdio.h>
+#include <sodium.h>
 #include <stdlib.h>
 #include <string.h>
-#include <sys/file.h>
 #include <sys/stat.h>
 #include <sys/statvfs.h>
 #include <unistd.h>
 
 #include "db.h"
+#include "header.h"
 #include "migrate.h"
 
 #define READERS_DEFAULT 4u
+#define READERS_MAX 256u
 #define FREE_BYTES_LEAST (4u << 20)
-
-/* Take FILE.lock and write our process id into it. */
-static bool lock_take(struct store *store, struct base_error *error)
-{
-    char path[4096];
-    int wrote = snprintf(path, sizeof path, "%s.lock", store->path);
-    if (wrote < 0 || (size_t)wrote >= sizeof path)
-        return base_fail(error, BASE_INVALID, "The database's path is too long.");
-    store->lock_fd = open(path, O_RDWR | O_CREAT | O_CLOEXEC, 0600);
-    if (store->lock_fd < 0)
-        return base_fail_errno(error, errno, "Opening the lock file %s", path);
-    char holder[32] = "";
-    if (flock(store->lock_fd, LOCK_EX | LOCK_NB) != 0) {
-        ssize_t length = pread(store->lock_fd, holder, sizeof holder - 1, 0);
-        holder[length > 0 ? length : 0] = '\0';
-        holder[strcspn(holder, "\n")] = '\0';
-        return base_fail(error, BASE_CONFLICT,
-                         "The database %s is in use by process %s; stop that first, since one "
-                         "process may use a database at a time.",
-                         store->path, holder[0] != '\0' ? holder : "(unknown)");
-    }
-    int length = snprintf(holder, sizeof holder, "%ld\n", (long)getpid());
-    if (ftruncate(store->lock_fd, 0) != 0 ||
-        pwrite(store->lock_fd, holder, (size_t)length, 0) != length)
-        return base_fail_errno(error, errno, "Writing the lock file %s", path);
-    return true;
-}
 
 static bool readers_open(struct store *store, unsigned count, struct base_error *error)
 {
@@ -49,7 +23,7 @@ static bool readers_open(struct store *store, unsigned count, struct base_error 
     if (store->readers == NULL || store->idle == NULL)
         return db_no_memory(error);
     for (unsigned i = 0; i < count; i++) {
-        if (!db_open(&store->readers[i], store->path, true, error))
+        if (!db_open(&store->readers[i], store->path, DB_READS, error))
             return false;
         store->reader_count++;
         store->idle[store->idle_count++] = &store->readers[i];
@@ -57,7 +31,7 @@ static bool readers_open(struct store *store, unsigned count, struct base_error 
     return true;
 }
 
-/* Does the path hold something, and may we go on? */
+/* Does the path hold something that may be a database, and may we go on? */
 static bool file_check(const char *path, bool must_exist, struct base_error *error)
 {
     struct stat status;
@@ -69,32 +43,84 @@ static bool file_check(const char *path, bool must_exist, struct base_error *err
                                     "There is no database %s; `ebbmark load` makes one.", path);
 }
 
+/* A new database is for its owner only: it holds passphrases' hashes and secrets. */
+static bool file_make(const char *path, struct base_error *error)
+{
+    int fd = open(path, O_WRONLY | O_CREAT | O_CLOEXEC, 0600);
+    if (fd < 0)
+        return base_fail_errno(error, errno, "Making the database %s", path);
+    (void)close(fd);
+    return true;
+}
+
+static bool open_writer(struct store *store, const struct store_options *options,
+                        struct base_error *error)
+{
+    enum header_kind kind;
+    if (!header_read(store->path, &kind, error) ||
+        (kind == HEADER_NEW && !file_make(store->path, error)) ||
+        !db_open(&store->writer, store->path, DB_WRITES, error))
+        return false;
+    /* Until it has been found to be ours, closing it must not change it. */
+    int careful = SQLITE_DBCONFIG_NO_CKPT_ON_CLOSE;
+    (void)sqlite3_db_config(store->writer.handle, careful, kind == HEADER_UNKNOWN ? 1 : 0, NULL);
+    if (!migrate_check(store, error))
+        return false;
+    (void)sqlite3_db_config(store->writer.handle, careful, 0, NULL);
+    if (options->migrate_only_if_new && store->version > 0 &&
+        store->version < store_version_newest())
+        return base_fail(error, BASE_CONFLICT,
+                         "%s is at version %d and this program at %d; run `ebbmark migrate` first.",
+                         store->path, store->version, store_version_newest());
+    /* About 40 MB of WAL before it is copied into the database, and at most 64 MB kept after a
+     * long read has let it grow. */
+    return db_script(&store->writer,
+                     "PRAGMA journal_mode = WAL; PRAGMA wal_autocheckpoint = 10000;"
+                     "PRAGMA journal_size_limit = 67108864;",
+                     error) &&
+           migrate_forward(store, store_migrations, error);
+}
+
 static bool open_parts(struct store *store, const struct store_options *options,
                        struct base_error *error)
 {
-    if (!file_check(store->path, options->must_exist, error) || !lock_take(store, error) ||
-        !db_open(&store->writer, store->path, false, error) || !migrate_check(store, error) ||
-        !db_script(&store->writer,
-                   "PRAGMA journal_mode = WAL; PRAGMA synchronous = FULL;"
-                   "PRAGMA wal_autocheckpoint = 4000;",
-                   error) ||
-        !migrate_forward(store, error))
+    unsigned readers = options->readers > 0 ? options->readers : READERS_DEFAULT;
+    if (!file_check(store->path, options->must_exist, error) ||
+        !lock_take(store->path, &store->lock_file, error))
         return false;
-    return readers_open(store, options->readers > 0 ? options->readers : READERS_DEFAULT, error);
+    struct base_error why = {0};
+    bool ok = open_writer(store, options, &why) &&
+              readers_open(store, readers < READERS_MAX ? readers : READERS_MAX, &why);
+    if (!ok && error != NULL)
+        *error = why;
+    /* Beside a file that is not ours nothing is left behind. */
+    store->foreign = !ok && why.kind == BASE_INVALID && store->lock_file.made;
+    return ok;
+}
+
+/* The path without symbolic links, so that one database has one lock by whatever name. A file that
+ * is not there yet keeps the name it was given. */
+static char *path_of(const char *path)
+{
+    char *resolved = realpath(path, NULL);
+    return resolved != NULL ? resolved : strdup(path);
 }
 
 bool store_open(const char *path, const struct store_options *options, struct store **out,
                 struct base_error *error)
 {
     *out = NULL;
+    if (sodium_init() < 0)
+        return base_fail(error, BASE_INTERNAL, "libsodium could not start.");
     struct store *store = calloc(1, sizeof *store);
     if (store == NULL)
         return db_no_memory(error);
-    store->lock_fd = -1;
-    (void)pthread_mutex_init(&store->writing, NULL);
+    store->lock_file.fd = -1;
+    (void)pthread_mutex_init(&store->adding, NULL);
     (void)pthread_mutex_init(&store->lock, NULL);
+    (void)pthread_cond_init(&store->turned, NULL);
     (void)pthread_cond_init(&store->returned, NULL);
-    store->path = strdup(path);
+    store->path = path_of(path);
     bool ok = store->path != NULL ? open_parts(store, options, error) : db_no_memory(error);
     if (!ok) {
         store_close(store);
@@ -111,11 +137,12 @@ void store_close(struct store *store)
     for (size_t i = 0; i < store->reader_count; i++)
         db_close(&store->readers[i]);
     db_close(&store->writer);
-    if (store->lock_fd >= 0)
-        (void)close(store->lock_fd);
+    if (store->path != NULL)
+        lock_end(store->path, &store->lock_file, store->foreign);
     (void)pthread_cond_destroy(&store->returned);
+    (void)pthread_cond_destroy(&store->turned);
     (void)pthread_mutex_destroy(&store->lock);
-    (void)pthread_mutex_destroy(&store->writing);
+    (void)pthread_mutex_destroy(&store->adding);
     free(store->idle);
     free(store->readers);
     free(store->path);
@@ -127,7 +154,7 @@ int store_version(const struct store *store)
     return store->version;
 }
 
-bool store_ready(struct store *store, struct base_error *error)
+static bool disk_check(const struct store *store, struct base_error *error)
 {
     struct statvfs disk;
     if (statvfs(store->path, &disk) != 0)
@@ -135,8 +162,14 @@ bool store_ready(struct store *store, struct base_error *error)
     if ((unsigned long long)disk.f_bavail * disk.f_frsize < FREE_BYTES_LEAST)
         return base_fail(error, BASE_DISK_FULL,
                          "The disk of the database has less than 4 MiB left.");
-    if ((disk.f_flag & ST_RDONLY) != 0)
-        return base_fail(error, BASE_IO, "The disk of the database is read-only.");
+    return (disk.f_flag & ST_RDONLY) == 0 ||
+           base_fail(error, BASE_IO, "The disk of the database is read-only.");
+}
+
+bool store_ready(struct store *store, struct base_error *error)
+{
+    if (!lock_check(store->path, &store->lock_file, error) || !disk_check(store, error))
+        return false;
     struct db *db = db_write(store, error);
     return db != NULL && db_write_end(store, true, error);
 }

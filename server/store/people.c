@@ -17,7 +17,8 @@ static bool fill_person(sqlite3_stmt *row, struct base_arena *arena, void *item)
         .credit = sqlite3_column_int(row, 6) != 0,
         .left = sqlite3_column_int(row, 7) != 0,
         .joined_ms = sqlite3_column_int64(row, 8)};
-    return person->handle != NULL && person->passphrase != NULL;
+    bool lacks_key = person->handle_key == NULL && !person->left;
+    return person->handle != NULL && person->passphrase != NULL && !lacks_key;
 }
 
 bool store_person_add(struct store *store, const char *handle, const char *handle_key,
@@ -62,55 +63,48 @@ bool store_people_list(struct store *store, struct base_arena *arena, int64_t af
                    PERSON "WHERE id > ? ORDER BY id LIMIT ?", "ii", after, (int64_t)limit);
 }
 
-/* Change one person; BASE_NOT_FOUND when there is none. */
-static bool change_person(struct store *store, const char *sql, int64_t value, int64_t id,
-                          struct base_error *error)
-{
-    struct db *db = db_write(store, error);
-    if (db == NULL)
-        return false;
-    bool ok = db_run(db, error, sql, "ii", value, id);
-    if (ok && sqlite3_changes(db->handle) == 0)
-        ok = base_fail(error, BASE_NOT_FOUND, "There is no such person.");
-    return db_write_end(store, ok, error);
-}
+static const char nobody[] = "There is no such person, or they have left.";
 
 bool store_person_set_role(struct store *store, int64_t id, enum store_role role,
                            struct base_error *error)
 {
-    return change_person(store, "UPDATE person SET role = ? WHERE id = ? AND gone = 0",
-                         (int64_t)role, id, error);
+    return db_change(store, nobody, error, "UPDATE person SET role = ? WHERE id = ? AND gone = 0",
+                     "ii", (int64_t)role, id);
 }
 
 bool store_person_set_suspended(struct store *store, int64_t id, bool suspended,
                                 struct base_error *error)
 {
-    return change_person(store, "UPDATE person SET suspended = ? WHERE id = ?", suspended ? 1 : 0,
-                         id, error);
+    return db_change(store, nobody, error,
+                     "UPDATE person SET suspended = ? WHERE id = ? AND gone = 0", "ii",
+                     (int64_t)suspended, id);
 }
 
 bool store_person_set_credit(struct store *store, int64_t id, bool credit, struct base_error *error)
 {
-    return change_person(store, "UPDATE person SET credit = ? WHERE id = ? AND gone = 0",
-                         credit ? 1 : 0, id, error);
+    return db_change(store, nobody, error, "UPDATE person SET credit = ? WHERE id = ? AND gone = 0",
+                     "ii", (int64_t)credit, id);
 }
 
 bool store_person_set_passphrase(struct store *store, int64_t id, const char *passphrase,
                                  struct base_error *error)
 {
-    return db_change(store, error, "UPDATE person SET passphrase = ? WHERE id = ? AND gone = 0",
-                     "ti", passphrase, id);
+    return db_change(store, nobody, error,
+                     "UPDATE person SET passphrase = ? WHERE id = ? AND gone = 0", "ti", passphrase,
+                     id);
 }
 
 bool store_person_forget(struct store *store, int64_t id, struct base_error *error)
 {
     static const char forget[] =
         "UPDATE person SET handle = '', handle_key = NULL, passphrase = '',"
-        " credit = 0, gone = 1 WHERE id = ?";
+        " credit = 0, gone = 1 WHERE id = ? AND gone = 0";
     struct db *db = db_write(store, error);
     if (db == NULL)
         return false;
-    bool ok = db_run(db, error, forget, "i", id) &&
-              db_run(db, error, "DELETE FROM access WHERE person = ?", "i", id);
+    bool ok = db_run(db, error, forget, "i", id);
+    if (ok && sqlite3_changes(db->handle) == 0)
+        ok = base_fail(error, BASE_NOT_FOUND, "%s", nobody);
+    ok = ok && db_run(db, error, "DELETE FROM access WHERE person = ?", "i", id);
     return db_write_end(store, ok, error);
 }

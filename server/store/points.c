@@ -1,12 +1,15 @@
 #include "points.h"
 
+#include <assert.h>
 #include <stdlib.h>
 #include <string.h>
 #include <zlib.h>
 
 #include "db.h"
 
-#define POINTS_MAX 100000000u
+/* What still fits in one of SQLite's blobs (1,000,000,000 bytes), if nothing can be compressed. */
+#define POINTS_MAX 40000000u
+#define ZLIB_RATIO_MAX 1032u /* zlib cannot compress by more than this (zlib's technical notes) */
 
 /* Bytes of n points: time 8, flux 4, trend 4, and error 4 where there is one. */
 static size_t plain_size(size_t n, bool has_error)
@@ -32,10 +35,15 @@ static void unshuffle(unsigned char *out, const unsigned char *in, size_t n, siz
 bool points_pack(const struct store_points *points, struct points_blob *out,
                  struct base_error *error)
 {
+    assert(points->count > 0);
     size_t n = points->count, size = plain_size(n, points->error != NULL);
+    *out = (struct points_blob){0};
+    if (n > POINTS_MAX)
+        return base_fail(error, BASE_TOO_LARGE, "A light curve has %zu points (limit %u).", n,
+                         POINTS_MAX);
     uLong bound = compressBound((uLong)size);
-    unsigned char *plain = malloc(size > 0 ? size : 1);
-    *out = (struct points_blob){.data = malloc(bound)};
+    unsigned char *plain = malloc(size);
+    out->data = malloc(bound);
     bool ok = plain != NULL && out->data != NULL;
     if (ok) {
         shuffle(plain, (const unsigned char *)points->time, n, 8);
@@ -56,36 +64,40 @@ bool points_pack(const struct store_points *points, struct points_blob *out,
     return true;
 }
 
+static bool damaged(struct base_error *error)
+{
+    return base_fail(error, BASE_CORRUPT,
+                     "The points of a stored light curve are damaged; restore the newest backup.");
+}
+
 bool points_unpack(const unsigned char *data, size_t size, uint32_t checksum, size_t count,
                    bool has_error, struct base_arena *arena, struct store_points *out,
                    struct base_error *error)
 {
-    if (count == 0 || count > POINTS_MAX)
-        return base_fail(error, BASE_CORRUPT, "A stored light curve states an impossible length.");
-    size_t need = plain_size(count, has_error);
+    /* Before taking memory: could these bytes hold so many points at all? */
+    if (data == NULL || count == 0 || count > POINTS_MAX ||
+        plain_size(count, has_error) / ZLIB_RATIO_MAX > size)
+        return damaged(error);
+    size_t need = plain_size(count, has_error), columns = has_error ? 3 : 2;
     uLong got = (uLong)need;
     unsigned char *plain = malloc(need);
     double *time = base_arena_take_array(arena, count, sizeof *time);
-    float *columns = base_arena_take_array(arena, count, (has_error ? 3 : 2) * sizeof *columns);
-    if (plain == NULL || time == NULL || columns == NULL) {
-        free(plain);
-        return db_no_memory(error);
-    }
-    bool ok = uncompress(plain, &got, data, (uLong)size) == Z_OK && got == need &&
-              (uint32_t)crc32_z(0, plain, need) == checksum;
+    float *values = base_arena_take_array(arena, count, columns * sizeof *values);
+    bool ok = plain != NULL && time != NULL && values != NULL;
+    if (!ok)
+        (void)db_no_memory(error);
+    else if (uncompress(plain, &got, data, (uLong)size) != Z_OK || got != need ||
+             (uint32_t)crc32_z(0, plain, need) != checksum)
+        ok = damaged(error);
     if (ok) {
         unshuffle((unsigned char *)time, plain, count, 8);
-        for (size_t column = 0; column < (has_error ? 3u : 2u); column++)
-            unshuffle((unsigned char *)(columns + column * count), plain + (8 + 4 * column) * count,
-                      count, 4);
+        for (size_t i = 0; i < columns; i++)
+            unshuffle((unsigned char *)(values + i * count), plain + (8 + 4 * i) * count, count, 4);
         *out = (struct store_points){.count = count,
                                      .time = time,
-                                     .flux = columns,
-                                     .trend = columns + count,
-                                     .error = has_error ? columns + 2 * count : NULL};
-    } else {
-        (void)base_fail(error, BASE_CORRUPT,
-                        "A stored light curve is damaged; restore the database from a backup.");
+                                     .flux = values,
+                                     .trend = values + count,
+                                     .error = has_error ? values + 2 * count : NULL};
     }
     free(plain);
     return ok;
@@ -94,16 +106,17 @@ bool points_unpack(const unsigned char *data, size_t size, uint32_t checksum, si
 bool store_points_read(struct store *store, struct base_arena *arena, int64_t light_curve,
                        struct store_points *out, struct base_error *error)
 {
-    static const char sql[] = "SELECT l.count, p.has_error, p.checksum, p.packed FROM points p"
-                              " JOIN light_curve l ON l.id = p.light_curve WHERE p.light_curve = ?";
+    /* The light curve comes first: one without its points is damage, not absence. */
+    static const char sql[] = "SELECT l.count, p.has_error, p.checksum, p.packed FROM light_curve l"
+                              " LEFT JOIN points p ON p.light_curve = l.id WHERE l.id = ?";
     struct db *db = db_read(store);
     sqlite3_stmt *row = db_bind(db, sql, error, "i", light_curve);
     int got = row != NULL ? db_next(db, row, error) : -1;
-    bool ok =
-        got == 1 &&
-        points_unpack(sqlite3_column_blob(row, 3), (size_t)sqlite3_column_bytes(row, 3),
-                      (uint32_t)sqlite3_column_int64(row, 2), (size_t)sqlite3_column_int64(row, 0),
-                      sqlite3_column_int(row, 1) != 0, arena, out, error);
+    const unsigned char *blob = got == 1 ? sqlite3_column_blob(row, 3) : NULL;
+    bool ok = got == 1 && points_unpack(blob, (size_t)sqlite3_column_bytes(row, 3),
+                                        (uint32_t)sqlite3_column_int64(row, 2),
+                                        (size_t)sqlite3_column_int64(row, 0),
+                                        sqlite3_column_int(row, 1) != 0, arena, out, error);
     if (got == 0)
         (void)base_fail(error, BASE_NOT_FOUND, "There is no such light curve.");
     db_done(row);

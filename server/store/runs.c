@@ -1,6 +1,14 @@
-#include "db.h"
+/*
+ * Consensus runs. A large one takes seconds to write, so it is written in pieces, between which
+ * others may write; it counts once its last piece has marked it as whole.
+ */
+#include "runs.h"
 
-static bool candidate_put(struct db *db, int64_t run, const struct store_candidate *c,
+#define PIECE_CANDIDATES 1000u
+#define PIECE_MEMBERS 5000u
+#define PIECE_SKILLS 5000u
+
+static bool put_candidate(struct db *db, int64_t run, const struct store_candidate *c,
                           struct base_error *error)
 {
     static const char sql[] =
@@ -20,54 +28,117 @@ static bool candidate_put(struct db *db, int64_t run, const struct store_candida
                   (int64_t)c->flags);
 }
 
-static bool run_put(struct db *db, struct store_run_new *new, struct base_error *error)
+static bool put_member(struct db *db, int64_t run, const struct store_member *member,
+                       struct base_error *error)
 {
-    static const char run_sql[] =
-        "INSERT INTO consensus_run (newest_review, reviews, people, candidates, begun_ms,"
-        " finished_ms, settings, fit) VALUES (?, ?, ?, ?, ?, ?, ?, ?)";
-    static const char member_sql[] = "INSERT INTO member (run, mark, candidate) VALUES (?, ?, ?)";
-    static const char skill_sql[] =
+    return db_run(db, error, "INSERT INTO member (run, mark, candidate) VALUES (?, ?, ?)", "iii",
+                  run, member->mark, member->candidate);
+}
+
+static bool put_skill(struct db *db, int64_t run, const struct store_skill *s,
+                      struct base_error *error)
+{
+    static const char sql[] =
         "INSERT INTO skill (run, person, looks, marks, days_looked, hit, hit_low, hit_high, chance,"
         " chance_low, chance_high, weight) VALUES (?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?)";
-    struct store_run *run = &new->run;
-    bool ok = db_run(db, error, run_sql, "iiiiiitt", run->newest_review, run->reviews, run->people,
-                     (int64_t) new->candidate_count, run->begun_ms, run->finished_ms, run->settings,
-                     run->fit);
-    run->id = ok ? sqlite3_last_insert_rowid(db->handle) : 0;
-    for (size_t i = 0; ok && i < new->candidate_count; i++)
-        ok = candidate_put(db, run->id, &new->candidates[i], error);
-    for (size_t i = 0; ok && i < new->member_count; i++)
-        ok = db_run(db, error, member_sql, "iii", run->id, new->members[i].mark,
-                    new->members[i].candidate);
-    for (size_t i = 0; ok && i < new->skill_count; i++) {
-        const struct store_skill *s = &new->skills[i];
-        ok = db_run(db, error, skill_sql, "iiiirrrrrrrr", run->id, s->person, s->looks, s->marks,
-                    s->days_looked, s->hit, s->hit_low, s->hit_high, s->chance, s->chance_low,
-                    s->chance_high, s->weight);
+    return db_run(db, error, sql, "iiiirrrrrrrr", run, s->person, s->looks, s->marks,
+                  s->days_looked, s->hit, s->hit_low, s->hit_high, s->chance, s->chance_low,
+                  s->chance_high, s->weight);
+}
+
+/* One piece of the candidates, the members or the skills: items `first` and on. */
+enum part { CANDIDATES, MEMBERS, SKILLS };
+static bool put_piece(struct db *db, const struct store_run_new *new, enum part part, size_t first,
+                      size_t count, struct base_error *error)
+{
+    bool ok = true;
+    for (size_t i = first; ok && i < first + count; i++) {
+        if (part == CANDIDATES)
+            ok = put_candidate(db, new->run.id, &new->candidates[i], error);
+        else if (part == MEMBERS)
+            ok = put_member(db, new->run.id, &new->members[i], error);
+        else
+            ok = put_skill(db, new->run.id, &new->skills[i], error);
     }
     return ok;
 }
 
-bool store_run_add(struct store *store, struct store_run_new *run, struct base_error *error)
+static bool put_part(struct store *store, const struct store_run_new *new, enum part part,
+                     size_t count, size_t piece, struct base_error *error)
 {
-    struct db *db = db_write(store, error);
-    return db != NULL && db_write_end(store, run_put(db, run, error), error);
+    bool ok = true;
+    for (size_t first = 0; ok && first < count; first += piece) {
+        size_t some = count - first < piece ? count - first : piece;
+        struct db *db = db_write(store, error);
+        ok = db != NULL && db_write_end(store, put_piece(db, new, part, first, some, error), error);
+    }
+    return ok;
 }
 
-bool store_run_current(struct store *store, int64_t *run, struct base_error *error)
+/* Remove what a run that was never finished has left. */
+static bool clear_unfinished(struct db *db, struct base_error *error)
 {
+#define UNFINISHED "(SELECT id FROM consensus_run WHERE whole = 0)"
+    return db_run(db, error, "DELETE FROM member WHERE run IN " UNFINISHED, "") &&
+           db_run(db, error, "DELETE FROM candidate WHERE run IN " UNFINISHED, "") &&
+           db_run(db, error, "DELETE FROM skill WHERE run IN " UNFINISHED, "") &&
+           db_run(db, error, "DELETE FROM consensus_run WHERE whole = 0", "");
+#undef UNFINISHED
+}
+
+static bool begin_run(struct store *store, struct store_run_new *new, struct base_error *error)
+{
+    static const char sql[] =
+        "INSERT INTO consensus_run (newest_review, reviews, people, candidates, begun_ms,"
+        " finished_ms, settings, fit) VALUES (?, ?, ?, ?, ?, ?, ?, ?)";
+    struct store_run *run = &new->run;
+    struct db *db = db_write(store, error);
+    if (db == NULL)
+        return false;
+    bool ok = clear_unfinished(db, error) &&
+              db_run(db, error, sql, "iiiiiitt", run->newest_review, run->reviews, run->people,
+                     (int64_t) new->candidate_count, run->begun_ms, run->finished_ms, run->settings,
+                     run->fit);
+    run->id = ok ? sqlite3_last_insert_rowid(db->handle) : 0;
+    return db_write_end(store, ok, error);
+}
+
+bool store_run_add(struct store *store, struct store_run_new *run, struct base_error *error)
+{
+    (void)pthread_mutex_lock(&store->adding);
+    bool ok = begin_run(store, run, error) &&
+              put_part(store, run, CANDIDATES, run->candidate_count, PIECE_CANDIDATES, error) &&
+              put_part(store, run, MEMBERS, run->member_count, PIECE_MEMBERS, error) &&
+              put_part(store, run, SKILLS, run->skill_count, PIECE_SKILLS, error) &&
+              db_change(store, NULL, error, "UPDATE consensus_run SET whole = 1 WHERE id = ?", "i",
+                        run->run.id);
+    if (!ok)
+        run->run.id = 0; /* its pieces are cleared by the next run, when there is room again */
+    (void)pthread_mutex_unlock(&store->adding);
+    return ok;
+}
+
+bool runs_resolve(struct store *store, int64_t asked, int64_t *run, struct base_error *error)
+{
+    static const char sql[] = "SELECT id FROM consensus_run WHERE whole = 1 AND (?1 = 0 OR id = ?1)"
+                              " ORDER BY id DESC LIMIT 1";
     struct db *db = db_read(store);
-    sqlite3_stmt *row = db_bind(db, "SELECT ifnull(max(id), 0) FROM consensus_run", error, "");
+    sqlite3_stmt *row = db_bind(db, sql, error, "i", asked);
     int got = row != NULL ? db_next(db, row, error) : -1;
     *run = got == 1 ? sqlite3_column_int64(row, 0) : 0;
     db_done(row);
     db_read_end(store, db);
-    return got == 1;
+    return got >= 0;
+}
+
+bool store_run_current(struct store *store, int64_t *run, struct base_error *error)
+{
+    return runs_resolve(store, 0, run, error);
 }
 
 #define RUN                                                                                        \
     "SELECT id, newest_review, reviews, people, candidates, begun_ms, finished_ms, settings, fit"  \
-    " FROM consensus_run "
+    " FROM consensus_run WHERE whole = 1 AND "
 
 static bool fill_run(sqlite3_stmt *row, struct base_arena *arena, void *item)
 {
@@ -87,55 +158,14 @@ static bool fill_run(sqlite3_stmt *row, struct base_arena *arena, void *item)
 bool store_run_read(struct store *store, struct base_arena *arena, int64_t run,
                     struct store_run *out, struct base_error *error)
 {
-    return db_row(store, arena, fill_run, out, "There is no such run.", error, RUN "WHERE id = ?",
-                  "i", run);
+    return db_row(store, arena, fill_run, out, "There is no such run.", error, RUN "id = ?", "i",
+                  run);
 }
 
 bool store_runs_list(struct store *store, struct base_arena *arena, int64_t before, size_t limit,
                      struct store_run **out, size_t *count, struct base_error *error)
 {
     return db_rows(store, arena, sizeof **out, fill_run, out, count, error,
-                   RUN "WHERE ?1 = 0 OR id < ?1 ORDER BY id DESC LIMIT ?2", "ii", before,
+                   RUN "(?1 = 0 OR id < ?1) ORDER BY id DESC LIMIT ?2", "ii", before,
                    (int64_t)limit);
-}
-
-#define SKILL                                                                                      \
-    "SELECT k.person, p.handle, k.looks, k.marks, k.days_looked, k.hit, k.hit_low, k.hit_high,"    \
-    " k.chance, k.chance_low, k.chance_high, k.weight FROM skill k"                                \
-    " JOIN person p ON p.id = k.person "
-
-/* Without an arena the handle is left out. */
-static bool fill_skill(sqlite3_stmt *row, struct base_arena *arena, void *item)
-{
-    struct store_skill *skill = item;
-    *skill = (struct store_skill){.person = sqlite3_column_int64(row, 0),
-                                  .handle = arena != NULL ? db_text(row, 1, arena) : "",
-                                  .looks = sqlite3_column_int64(row, 2),
-                                  .marks = sqlite3_column_int64(row, 3),
-                                  .days_looked = db_real(row, 4),
-                                  .hit = db_real(row, 5),
-                                  .hit_low = db_real(row, 6),
-                                  .hit_high = db_real(row, 7),
-                                  .chance = db_real(row, 8),
-                                  .chance_low = db_real(row, 9),
-                                  .chance_high = db_real(row, 10),
-                                  .weight = db_real(row, 11)};
-    return skill->handle != NULL;
-}
-
-bool store_skills_list(struct store *store, struct base_arena *arena, int64_t run,
-                       struct store_skill **out, size_t *count, struct base_error *error)
-{
-    return db_rows(store, arena, sizeof **out, fill_skill, out, count, error,
-                   SKILL "WHERE k.run = iif(?1 = 0, (SELECT max(id) FROM consensus_run), ?1)"
-                         " ORDER BY k.person",
-                   "i", run);
-}
-
-bool store_skill_read(struct store *store, int64_t person, struct store_skill *out,
-                      struct base_error *error)
-{
-    return db_row(store, NULL, fill_skill, out, "No run knows this person's skill yet.", error,
-                  SKILL "WHERE k.run = (SELECT max(id) FROM consensus_run) AND k.person = ?", "i",
-                  person);
 }

@@ -1,5 +1,4 @@
 #include <sodium.h>
-#include <string.h>
 
 #include "db.h"
 #include "ebbmark/clock.h"
@@ -11,18 +10,16 @@ bool store_secret(struct store *store, const char *name, unsigned char out[STORE
         "INSERT INTO secret (name, value) VALUES (?, ?) ON CONFLICT DO NOTHING";
     static const char read[] = "SELECT value FROM secret WHERE name = ?";
     unsigned char fresh[STORE_HASH_SIZE];
-    if (sodium_init() < 0)
-        return base_fail(error, BASE_INTERNAL, "libsodium could not start.");
     randombytes_buf(fresh, sizeof fresh);
     struct db *db = db_write(store, error);
     if (db == NULL)
         return false;
     bool ok = db_run(db, error, make, "tb", name, fresh, sizeof fresh);
     sqlite3_stmt *row = ok ? db_bind(db, read, error, "t", name) : NULL;
-    ok = row != NULL && db_next(db, row, error) == 1;
-    if (ok)
-        memcpy(out, sqlite3_column_blob(row, 0), STORE_HASH_SIZE);
+    ok = row != NULL && db_next(db, row, error) == 1 &&
+         db_blob(db, row, 0, out, STORE_HASH_SIZE, error);
     db_done(row);
+    sodium_memzero(fresh, sizeof fresh);
     return db_write_end(store, ok, error);
 }
 

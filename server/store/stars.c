@@ -4,7 +4,8 @@
     "SELECT s.id, s.name, s.ra_deg, s.dec_deg, s.magnitude, s.temperature_k, s.radius_rsun,"       \
     " s.mass_msun, (SELECT count(*) FROM light_curve l WHERE l.star = s.id),"                      \
     " (SELECT count(*) FROM light_curve l JOIN segment g ON g.light_curve = l.id"                  \
-    " WHERE l.star = s.id), s.reviews FROM star s "
+    " WHERE l.star = s.id), (SELECT ifnull(sum(g.looks), 0) FROM light_curve l"                    \
+    " JOIN segment g ON g.light_curve = l.id WHERE l.star = s.id) FROM star s "
 
 static bool fill_star(sqlite3_stmt *row, struct base_arena *arena, void *item)
 {

@@ -1,0 +1,62 @@
+#include "header.h"
+
+#include <errno.h>
+#include <fcntl.h>
+#include <limits.h>
+#include <stdint.h>
+#include <stdio.h>
+#include <string.h>
+#include <sys/stat.h>
+#include <unistd.h>
+
+/* SQLite's file format, https://www.sqlite.org/fileformat2.html, section 1.3. */
+#define HEADER_SIZE 100
+#define AT_PAGE_COUNT 28
+#define AT_APPLICATION_ID 68
+
+static uint32_t big_endian(const unsigned char *at)
+{
+    return (uint32_t)at[0] << 24 | (uint32_t)at[1] << 16 | (uint32_t)at[2] << 8 | at[3];
+}
+
+static bool has_wal(const char *path)
+{
+    char wal[PATH_MAX];
+    struct stat status;
+    int wrote = snprintf(wal, sizeof wal, "%s-wal", path);
+    return wrote > 0 && (size_t)wrote < sizeof wal && stat(wal, &status) == 0 && status.st_size > 0;
+}
+
+static bool judge(const char *path, const unsigned char *header, size_t length,
+                  enum header_kind *kind, struct base_error *error)
+{
+    *kind = HEADER_NEW;
+    if (length == 0)
+        return true;
+    if (length < HEADER_SIZE || memcmp(header, "SQLite format 3", 16) != 0)
+        return base_fail(error, BASE_INVALID,
+                         "%s is not an Ebbmark database but some other file, so it is left alone.",
+                         path);
+    uint32_t id = big_endian(header + AT_APPLICATION_ID);
+    if (id == HEADER_APPLICATION_ID)
+        *kind = HEADER_OURS;
+    else if (has_wal(path))
+        *kind = HEADER_UNKNOWN;
+    else if (id != 0 || big_endian(header + AT_PAGE_COUNT) > 1)
+        return base_fail(error, BASE_INVALID,
+                         "%s is a database of another program, so it is left alone.", path);
+    return true;
+}
+
+bool header_read(const char *path, enum header_kind *kind, struct base_error *error)
+{
+    unsigned char header[HEADER_SIZE] = {0};
+    *kind = HEADER_NEW;
+    int fd = open(path, O_RDONLY | O_CLOEXEC);
+    if (fd < 0)
+        return errno == ENOENT || base_fail_errno(error, errno, "Opening the database %s", path);
+    ssize_t length = pread(fd, header, sizeof header, 0);
+    bool ok = length >= 0 || base_fail_errno(error, errno, "Reading the database %s", path);
+    (void)close(fd);
+    return ok && judge(path, header, (size_t)length, kind, error);
+}
