@@ -204,11 +204,11 @@ static double exposed(const struct ephemeris_transit *transit, double since_d, d
 {
     double half = 0.5 * transit->exposure_d, period = transit->period_d;
     double first = ceil((since_d - half - outer) / period);
-    double last = floor((since_d + half + outer) / period);
+    double transits = floor((since_d + half + outer) / period) - first + 1.0;
     double lost = 0.0;
-    for (double cycle = first; cycle <= last; cycle += 1.0) {
-        double from = since_d - half - cycle * period, to = since_d + half - cycle * period;
-        lost += missing_integral(transit, from, to, outer, inner);
+    for (size_t i = 0; (double)i < transits; i++) {
+        double mid = (first + (double)i) * period;
+        lost += missing_integral(transit, since_d - half - mid, since_d + half - mid, outer, inner);
     }
     return 1.0 - lost / transit->exposure_d;
 }

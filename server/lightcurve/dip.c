@@ -16,7 +16,7 @@
 #define POINTS_FITTED_MOST 4000 /* more are averaged down to about so many */
 #define AWAY_LENGTHS 1.25       /* so many lengths off, a point cannot be part of the dip */
 #define OUTLIER_SIGMAS 6.0
-#define OUTLIERS_MOST 0.3      /* more than this share beside the dip are no outliers */
+#define OUTLIERS_MOST 0.4      /* more than this share beside the dip are no outliers */
 #define SIDE_POINTS_LEAST 3    /* on both sides, for a slope … */
 #define SIDE_LENGTH_LEAST 0.25 /* … over this share of the interval */
 #define MID_REACH 0.25         /* the middle may lie outside the interval by so many lengths */

@@ -95,6 +95,8 @@ static double gain_of(const struct totals *totals, size_t first, size_t end, dou
     double norm = w - w * w / totals->all_weight;
     if (totals->points->slope)
         norm -= m * m / totals->all_square;
+    *depth = 0.0;
+    *variance = INFINITY;
     if (!(norm > BESIDE_SHARE * w))
         return -1.0;
     *depth = -r / norm;
@@ -170,19 +172,29 @@ static size_t first_not_before(const struct dip_points *points, double at)
     return low;
 }
 
+/* Boxes of one length at every place the bounds allow. */
+static void search_places(const struct totals *totals, double sign, double length,
+                          struct best *best)
+{
+    const struct dip_bounds *bounds = totals->bounds;
+    double step = length / STEPS_A_LENGTH;
+    size_t places = (size_t)((bounds->mid_most_d - bounds->mid_least_d) / step) + 1;
+    for (size_t i = 0; i < places; i++) {
+        double mid = bounds->mid_least_d + (double)i * step;
+        size_t first = first_not_before(totals->points, mid - 0.5 * length);
+        size_t end = first_not_before(totals->points, mid + 0.5 * length);
+        try_box(totals, first, end, sign, best);
+    }
+}
+
 static struct best search_grid(const struct totals *totals, double sign)
 {
     const struct dip_bounds *bounds = totals->bounds;
     struct best best = {.score = -INFINITY};
-    for (double length = bounds->length_least_d; length <= bounds->length_most_d;
-         length *= LENGTH_RATIO) {
-        double step = length / STEPS_A_LENGTH;
-        for (double mid = bounds->mid_least_d; mid <= bounds->mid_most_d; mid += step) {
-            size_t first = first_not_before(totals->points, mid - 0.5 * length);
-            size_t end = first_not_before(totals->points, mid + 0.5 * length);
-            try_box(totals, first, end, sign, &best);
-        }
-    }
+    double span = log(bounds->length_most_d / bounds->length_least_d);
+    size_t lengths = (size_t)(span / log(LENGTH_RATIO)) + 1;
+    for (size_t i = 0; i < lengths; i++)
+        search_places(totals, sign, bounds->length_least_d * pow(LENGTH_RATIO, (double)i), &best);
     return best;
 }
 

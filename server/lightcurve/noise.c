@@ -42,8 +42,8 @@ static size_t window_means(const double *time, const double *flat, size_t n, dou
                            double least, double ceiling, double *means)
 {
     size_t count = 0, first = 0;
-    for (double k = 0.0; first < n; k += 1.0) {
-        double starts = time[0] + 0.5 * k * width_d;
+    for (size_t k = 0; first < n; k++) {
+        double starts = time[0] + 0.5 * (double)k * width_d;
         while (first < n && time[first] < starts)
             first++;
         double sum = 0.0, held = 0.0;
