@@ -16,6 +16,7 @@
 #include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
+#include <sys/mount.h>
 #include <sys/stat.h>
 #include <unistd.h>
 
@@ -249,6 +250,33 @@ static inline struct id_list open_segments(struct place *place)
     struct id_list list = {0};
     assert_ok(store_segments_open_each(place->store, id_list_add, &list, &error), error);
     return list;
+}
+
+/* A small disk of memory; *state is its folder, or NULL where there can be none. */
+static inline int mount_disk(void **state)
+{
+    char *folder = strdup("/tmp/ebbmark-campaign-disk-XXXXXX");
+    *state = NULL;
+    if (folder == NULL || mkdtemp(folder) == NULL)
+        return -1;
+    if (mount("tmpfs", folder, "tmpfs", 0, "size=3m") == 0) {
+        *state = folder;
+    } else {
+        (void)rmdir(folder);
+        free(folder);
+    }
+    return 0;
+}
+
+static inline int unmount_disk(void **state)
+{
+    char *folder = *state;
+    if (folder == NULL)
+        return 0;
+    int failed = umount2(folder, MNT_DETACH);
+    (void)rmdir(folder);
+    free(folder);
+    return failed;
 }
 
 #endif
