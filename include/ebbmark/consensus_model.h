@@ -82,4 +82,9 @@ void consensus_output_free(struct consensus_output *output);
 bool consensus_fit(const struct consensus_input *input, const struct consensus_settings *settings,
                    struct consensus_output *output, struct base_error *error);
 
+/* The plain two-class form, which knows no SNR, time or lures: the baseline in evaluations. */
+bool consensus_fit_two_class(const struct consensus_input *input,
+                             const struct consensus_settings *settings,
+                             struct consensus_output *output, struct base_error *error);
+
 #endif

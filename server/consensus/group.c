@@ -1,23 +1,48 @@
-#include "ebbmark/consensus_group.h"
+#include "group.h"
 
 #include <assert.h>
 #include <math.h>
 #include <stdlib.h>
 #include <string.h>
 
+#include "linkage.h"
+
+/* ---- the weighted median ---- */
+
+static void swap(double *values, size_t i, size_t k)
+{
+    double kept = values[i];
+    values[i] = values[k];
+    values[k] = kept;
+}
+
+/* Let the value at `at` sink to its place in the heap of the first n. */
+static void sink(double *values, double *weights, size_t at, size_t n)
+{
+    for (;;) {
+        size_t largest = at, left = 2 * at + 1, right = left + 1;
+        if (left < n && values[left] > values[largest])
+            largest = left;
+        if (right < n && values[right] > values[largest])
+            largest = right;
+        if (largest == at)
+            return;
+        swap(values, at, largest);
+        swap(weights, at, largest);
+        at = largest;
+    }
+}
+
 double consensus_weighted_median(double *values, double *weights, size_t n)
 {
     assert(n >= 1);
-    /* An insertion sort of the two arrays together: groups hold tens of marks. */
-    for (size_t i = 1; i < n; i++) {
-        double value = values[i], weight = weights[i];
-        size_t at = i;
-        for (; at > 0 && values[at - 1] > value; at--) {
-            values[at] = values[at - 1];
-            weights[at] = weights[at - 1];
-        }
-        values[at] = value;
-        weights[at] = weight;
+    /* A heap sort keeps the two arrays together without memory of its own. */
+    for (size_t i = n / 2; i-- > 0;)
+        sink(values, weights, i, n);
+    for (size_t end = n; end-- > 1;) {
+        swap(values, 0, end);
+        swap(weights, 0, end);
+        sink(values, weights, 0, end);
     }
     double total = 0.0, reached = 0.0;
     for (size_t i = 0; i < n; i++)
@@ -30,117 +55,28 @@ double consensus_weighted_median(double *values, double *weights, size_t n)
     return values[n - 1];
 }
 
-/* One run of overlapping marks at work: clusters by index, their average distances in a matrix. */
-struct run {
-    const struct consensus_mark *const *marks;
-    size_t n;
-    double *distance; /* n x n; INFINITY forbids */
-    size_t *size;     /* of a cluster; 0 once merged into another */
-    size_t *nearest;  /* another cluster that none is nearer than, n when none may join */
-    size_t *cluster;  /* of each mark */
-};
-
-static double distance_of(const struct consensus_mark *a, const struct consensus_mark *b)
-{
-    if (a->review == b->review)
-        return INFINITY;
-    double shared = fmin(a->ends_d, b->ends_d) - fmax(a->starts_d, b->starts_d);
-    if (shared <= 0.0)
-        return 1.0;
-    double whole = fmax(a->ends_d, b->ends_d) - fmin(a->starts_d, b->starts_d);
-    return 1.0 - shared / whole;
-}
-
-static void nearest_find(struct run *run, size_t i)
-{
-    double least = INFINITY;
-    run->nearest[i] = run->n;
-    for (size_t k = 0; k < run->n; k++)
-        if (k != i && run->size[k] > 0 && run->distance[i * run->n + k] < least) {
-            least = run->distance[i * run->n + k];
-            run->nearest[i] = k;
-        }
-}
-
-/* Put cluster b into a: the average distance to each other cluster is weighted by sizes. */
-static void merge(struct run *run, size_t a, size_t b)
-{
-    size_t n = run->n;
-    double wa = (double)run->size[a], wb = (double)run->size[b];
-    for (size_t k = 0; k < n; k++) {
-        if (run->size[k] == 0 || k == a || k == b)
-            continue;
-        double both = (wa * run->distance[a * n + k] + wb * run->distance[b * n + k]) / (wa + wb);
-        run->distance[a * n + k] = run->distance[k * n + a] = both;
-    }
-    run->size[a] += run->size[b];
-    run->size[b] = 0;
-    for (size_t i = 0; i < n; i++)
-        if (run->cluster[i] == b)
-            run->cluster[i] = a;
-    nearest_find(run, a);
-    for (size_t k = 0; k < n; k++)
-        if (run->size[k] > 0 && (run->nearest[k] == a || run->nearest[k] == b))
-            nearest_find(run, k);
-}
-
-/* The two nearest clusters, or false when none are near enough. */
-static bool nearest_pair(const struct run *run, size_t *a, size_t *b)
-{
-    double least = CONSENSUS_GROUP_CUT;
-    bool found = false;
-    for (size_t i = 0; i < run->n; i++) {
-        if (run->size[i] == 0 || run->nearest[i] == run->n)
-            continue;
-        double distance = run->distance[i * run->n + run->nearest[i]];
-        if (distance < least || (!found && distance <= least)) {
-            least = distance;
-            *a = i < run->nearest[i] ? i : run->nearest[i];
-            *b = i < run->nearest[i] ? run->nearest[i] : i;
-            found = true;
-        }
-    }
-    return found;
-}
-
-static void agglomerate(struct run *run)
-{
-    size_t n = run->n, a = 0, b = 0;
-    for (size_t i = 0; i < n; i++) {
-        run->size[i] = 1;
-        run->cluster[i] = i;
-        for (size_t k = 0; k < i; k++)
-            run->distance[i * n + k] = run->distance[k * n + i] =
-                distance_of(run->marks[i], run->marks[k]);
-    }
-    for (size_t i = 0; i < n; i++)
-        nearest_find(run, i);
-    while (nearest_pair(run, &a, &b))
-        merge(run, a, b);
-}
-
-static bool run_group(const struct consensus_mark *const *marks, size_t n, size_t *cluster,
-                      struct base_error *error)
-{
-    struct run run = {.marks = marks, .n = n, .cluster = cluster};
-    run.distance = malloc(n * n * sizeof *run.distance);
-    run.size = malloc(n * sizeof *run.size);
-    run.nearest = malloc(n * sizeof *run.nearest);
-    bool ok = run.distance != NULL && run.size != NULL && run.nearest != NULL;
-    if (ok)
-        agglomerate(&run);
-    free(run.nearest);
-    free(run.size);
-    free(run.distance);
-    return ok || base_fail(error, BASE_MEMORY, "There is no memory to group marks.");
-}
-
-/* ---- the whole ---- */
+/* ---- the arrays of one call ---- */
 
 struct key {
     const struct consensus_mark *mark;
     size_t index; /* in the caller's array */
 };
+
+struct whole {
+    struct key *keys; /* n; sorted by start, and within a long run by centre */
+    size_t *cluster;  /* n: of the piece at work */
+    size_t *label;    /* by caller's index: a number for each group, from 0, with holes */
+    size_t labels;
+    size_t evaluations; /* distances computed, for the tests of cost */
+};
+
+static double distance_of(double starts_a, double ends_a, double starts_b, double ends_b)
+{
+    double shared = fmin(ends_a, ends_b) - fmax(starts_a, starts_b);
+    if (shared <= 0.0)
+        return 1.0;
+    return 1.0 - shared / (fmax(ends_a, ends_b) - fmin(starts_a, starts_b));
+}
 
 static int by_start(const void *a, const void *b)
 {
@@ -163,35 +99,202 @@ static int by_centre(const void *a, const void *b)
     return (one->id > other->id) - (one->id < other->id);
 }
 
-/* The arrays of one call. */
-struct whole {
-    struct key *keys;                    /* n; sorted by start, and within a long run by centre */
-    const struct consensus_mark **marks; /* n: the marks of the piece at work */
-    size_t *cluster;                     /* n: of the piece at work */
-    size_t *label;                       /* by caller's index: a number for each group, from 0 */
-    size_t groups;
-};
+/* ---- a piece of at most CONSENSUS_GROUP_RUN_MAX overlapping marks ---- */
 
-/* Group keys[first … first+count-1], at most CONSENSUS_GROUP_RUN_MAX of them. */
-static bool piece_group(struct whole *whole, size_t first, size_t count, struct base_error *error)
+static void piece_distances(struct whole *whole, const struct key *keys, size_t n, double *distance)
 {
-    for (size_t i = 0; i < count; i++)
-        whole->marks[i] = whole->keys[first + i].mark;
-    if (!run_group(whole->marks, count, whole->cluster, error))
-        return false;
-    for (size_t i = 0; i < count; i++) {
-        size_t root = whole->cluster[i];
-        if (root == i)
-            whole->label[whole->keys[first + i].index] = whole->groups++;
+    for (size_t i = 0; i < n; i++) {
+        const struct consensus_mark *a = keys[i].mark;
+        for (size_t k = 0; k < i; k++) {
+            const struct consensus_mark *b = keys[k].mark;
+            distance[i * n + k] = distance[k * n + i] =
+                a->review == b->review
+                    ? INFINITY
+                    : distance_of(a->starts_d, a->ends_d, b->starts_d, b->ends_d);
+        }
     }
-    for (size_t i = 0; i < count; i++)
-        whole->label[whole->keys[first + i].index] =
-            whole->label[whole->keys[first + whole->cluster[i]].index];
-    return true;
+    whole->evaluations += n * (n - 1) / 2;
 }
 
-/* A run too long for one piece is cut where centres stand farthest apart, within its middle half.
+static bool piece_group(struct whole *whole, size_t first, size_t count, struct base_error *error)
+{
+    const struct key *keys = whole->keys + first;
+    double *distance = malloc(count * count * sizeof *distance);
+    size_t *size = malloc(count * sizeof *size);
+    bool ok = distance != NULL && size != NULL;
+    if (ok) {
+        piece_distances(whole, keys, count, distance);
+        for (size_t i = 0; i < count; i++)
+            size[i] = 1;
+        ok = linkage_average(distance, size, count, CONSENSUS_GROUP_CUT, whole->cluster);
+    }
+    for (size_t i = 0; ok && i < count; i++)
+        whole->label[keys[i].index] =
+            whole->cluster[i] == i ? whole->labels++ : whole->label[keys[whole->cluster[i]].index];
+    free(size);
+    free(distance);
+    return ok || base_fail(error, BASE_MEMORY, "There is no memory to group marks.");
+}
+
+/* ---- joining what a cut between two pieces has parted ---- */
+
+/* A group of one side, seen as one interval. */
+struct part {
+    size_t label, size;
+    double starts_d, ends_d; /* means of its marks */
+    double from_cut;
+    bool left;
+};
+struct seat { /* a mark's review and the part it sits in */
+    int64_t review;
+    size_t part;
+};
+
+static int by_distance_from_cut(const void *a, const void *b)
+{
+    const struct part *one = a, *other = b;
+    if (one->from_cut != other->from_cut)
+        return one->from_cut < other->from_cut ? -1 : 1;
+    return (one->label > other->label) - (one->label < other->label);
+}
+
+static int by_review(const void *a, const void *b)
+{
+    const struct seat *one = a, *other = b;
+    if (one->review != other->review)
+        return one->review < other->review ? -1 : 1;
+    return (one->part > other->part) - (one->part < other->part);
+}
+
+/* What joining works with: the parts of both sides, from label `base` on. */
+struct join {
+    struct part *parts; /* slots, later only those that are taken up */
+    size_t count;
+    size_t *place; /* by label - base: which part, SIZE_MAX when left out */
+    struct seat *seats;
+    size_t seat_count;
+    double *distance;
+    size_t *size, *cluster;
+};
+
+/* The parts nearest to the cut, at most CONSENSUS_GROUP_RUN_MAX. */
+static void parts_gather(const struct whole *whole, struct join *join, size_t first, size_t cut,
+                         size_t count, size_t base, size_t slots)
+{
+    const struct consensus_mark *edge = whole->keys[first + cut].mark;
+    double middle = 0.5 * (edge->starts_d + edge->ends_d);
+    for (size_t i = 0; i < count; i++) {
+        const struct key *key = &whole->keys[first + i];
+        struct part *part = &join->parts[whole->label[key->index] - base];
+        part->size++;
+        part->starts_d += key->mark->starts_d;
+        part->ends_d += key->mark->ends_d;
+        part->left = i < cut;
+    }
+    for (size_t s = 0; s < slots; s++) {
+        struct part *part = &join->parts[s];
+        part->label = base + s;
+        part->from_cut = INFINITY;
+        join->place[s] = SIZE_MAX;
+        if (part->size == 0)
+            continue;
+        part->starts_d /= (double)part->size;
+        part->ends_d /= (double)part->size;
+        part->from_cut = fabs(0.5 * (part->starts_d + part->ends_d) - middle);
+        join->count++;
+    }
+    qsort(join->parts, slots, sizeof *join->parts, by_distance_from_cut);
+    if (join->count > CONSENSUS_GROUP_RUN_MAX)
+        join->count = CONSENSUS_GROUP_RUN_MAX;
+    for (size_t p = 0; p < join->count; p++)
+        join->place[join->parts[p].label - base] = p;
+}
+
+/* Parts of one side stay apart, as average linkage had them, and so do parts that share a review.
  */
+static void parts_distances(struct whole *whole, const struct join *join)
+{
+    size_t n = join->count;
+    for (size_t i = 0; i < n; i++) {
+        const struct part *a = &join->parts[i];
+        join->size[i] = a->size;
+        for (size_t k = 0; k < i; k++) {
+            const struct part *b = &join->parts[k];
+            join->distance[i * n + k] = join->distance[k * n + i] =
+                a->left == b->left ? INFINITY
+                                   : distance_of(a->starts_d, a->ends_d, b->starts_d, b->ends_d);
+        }
+    }
+    whole->evaluations += n * (n - 1) / 2;
+    for (size_t from = 0; from < join->seat_count;) {
+        size_t to = from;
+        while (to < join->seat_count && join->seats[to].review == join->seats[from].review)
+            to++;
+        for (size_t i = from; i < to; i++)
+            for (size_t k = from; k < i; k++) {
+                size_t a = join->seats[i].part, b = join->seats[k].part;
+                join->distance[a * n + b] = join->distance[b * n + a] = INFINITY;
+            }
+        from = to;
+    }
+}
+
+static bool join_open(struct join *join, size_t slots, size_t count)
+{
+    size_t most = slots < CONSENSUS_GROUP_RUN_MAX ? slots : CONSENSUS_GROUP_RUN_MAX;
+    join->parts = calloc(slots, sizeof *join->parts);
+    join->place = malloc(slots * sizeof *join->place);
+    join->seats = malloc(count * sizeof *join->seats);
+    join->distance = malloc(most * most * sizeof *join->distance);
+    join->size = malloc(most * sizeof *join->size);
+    join->cluster = malloc(most * sizeof *join->cluster);
+    return join->parts != NULL && join->place != NULL && join->seats != NULL &&
+           join->distance != NULL && join->size != NULL && join->cluster != NULL;
+}
+
+static void join_free(struct join *join)
+{
+    free(join->cluster);
+    free(join->size);
+    free(join->distance);
+    free(join->seats);
+    free(join->place);
+    free(join->parts);
+}
+
+/* Join groups left and right of the cut at first + cut whose labels start at base. */
+static bool pieces_join(struct whole *whole, size_t first, size_t cut, size_t count, size_t base,
+                        struct base_error *error)
+{
+    struct join join = {0};
+    bool ok = join_open(&join, whole->labels - base, count);
+    if (ok) {
+        parts_gather(whole, &join, first, cut, count, base, whole->labels - base);
+        for (size_t i = 0; i < count; i++) {
+            const struct key *key = &whole->keys[first + i];
+            size_t part = join.place[whole->label[key->index] - base];
+            if (part != SIZE_MAX)
+                join.seats[join.seat_count++] = (struct seat){key->mark->review, part};
+        }
+        qsort(join.seats, join.seat_count, sizeof *join.seats, by_review);
+        parts_distances(whole, &join);
+        ok = linkage_average(join.distance, join.size, join.count, CONSENSUS_GROUP_CUT,
+                             join.cluster);
+    }
+    for (size_t i = 0; ok && i < count; i++) {
+        size_t *label = &whole->label[whole->keys[first + i].index];
+        size_t part = join.place[*label - base];
+        if (part != SIZE_MAX)
+            *label = join.parts[join.cluster[part]].label;
+    }
+    join_free(&join);
+    return ok || base_fail(error, BASE_MEMORY, "There is no memory to group marks.");
+}
+
+/* ---- the whole ---- */
+
+/* A run too long for one piece is cut where centres stand farthest apart, within its middle half;
+ * what the cut has parted is joined again. */
 static bool pieces_group(struct whole *whole, size_t first, size_t count, struct base_error *error)
 {
     if (count <= CONSENSUS_GROUP_RUN_MAX)
@@ -207,8 +310,10 @@ static bool pieces_group(struct whole *whole, size_t first, size_t count, struct
             cut = i;
         }
     }
+    size_t base = whole->labels;
     return pieces_group(whole, first, cut, error) &&
-           pieces_group(whole, first + cut, count - cut, error);
+           pieces_group(whole, first + cut, count - cut, error) &&
+           pieces_join(whole, first, cut, count, base, error);
 }
 
 static bool runs_group(struct whole *whole, size_t n, struct base_error *error)
@@ -230,12 +335,12 @@ static bool runs_group(struct whole *whole, size_t n, struct base_error *error)
 }
 
 /* Number the groups by the start of their first mark, and hand both arrays out sorted by start. */
-static bool hand_out(struct whole *whole, size_t n, size_t *sorted, size_t *group)
+static bool hand_out(struct whole *whole, size_t n, size_t *sorted, size_t *group, size_t *groups)
 {
-    size_t *number = malloc((whole->groups + 1) * sizeof *number), next = 0;
+    size_t *number = malloc((whole->labels + 1) * sizeof *number), next = 0;
     if (number == NULL)
         return false;
-    for (size_t g = 0; g < whole->groups; g++)
+    for (size_t g = 0; g < whole->labels; g++)
         number[g] = SIZE_MAX;
     qsort(whole->keys, n, sizeof *whole->keys, by_start);
     for (size_t i = 0; i < n; i++) {
@@ -245,33 +350,40 @@ static bool hand_out(struct whole *whole, size_t n, size_t *sorted, size_t *grou
         sorted[i] = whole->keys[i].index;
         group[i] = number[label];
     }
+    *groups = next;
     free(number);
     return true;
 }
 
-bool consensus_group_marks(const struct consensus_mark *marks, size_t n, size_t *sorted,
-                           size_t *group, size_t *groups, struct base_error *error)
+bool group_marks_counted(const struct consensus_mark *marks, size_t n, size_t *sorted,
+                         size_t *group, size_t *groups, size_t *evaluations,
+                         struct base_error *error)
 {
     struct whole whole = {0};
     whole.keys = malloc((n + 1) * sizeof *whole.keys);
-    whole.marks = malloc((n + 1) * sizeof *whole.marks);
     whole.cluster = malloc((n + 1) * sizeof *whole.cluster);
     whole.label = malloc((n + 1) * sizeof *whole.label);
-    bool ok = (whole.keys != NULL && whole.marks != NULL && whole.cluster != NULL &&
-               whole.label != NULL) ||
+    *groups = 0;
+    bool ok = (whole.keys != NULL && whole.cluster != NULL && whole.label != NULL) ||
               base_fail(error, BASE_MEMORY, "There is no memory to group marks.");
     for (size_t i = 0; ok && i < n; i++)
         whole.keys[i] = (struct key){&marks[i], i};
     if (ok) {
         qsort(whole.keys, n, sizeof *whole.keys, by_start);
         ok = runs_group(&whole, n, error) &&
-             (hand_out(&whole, n, sorted, group) ||
+             (hand_out(&whole, n, sorted, group, groups) ||
               base_fail(error, BASE_MEMORY, "There is no memory to group marks."));
     }
-    *groups = ok ? whole.groups : 0;
+    *evaluations = whole.evaluations;
     free(whole.label);
     free(whole.cluster);
-    free(whole.marks);
     free(whole.keys);
     return ok;
+}
+
+bool consensus_group_marks(const struct consensus_mark *marks, size_t n, size_t *sorted,
+                           size_t *group, size_t *groups, struct base_error *error)
+{
+    size_t evaluations;
+    return group_marks_counted(marks, n, sorted, group, groups, &evaluations, error);
 }

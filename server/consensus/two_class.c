@@ -26,13 +26,6 @@ struct fit {
     double crowd_hit, crowd_chance, prior;
 };
 
-void consensus_output_free(struct consensus_output *output)
-{
-    free(output->answers);
-    free(output->skills);
-    *output = (struct consensus_output){0};
-}
-
 static bool in_range(const struct consensus_input *input, struct base_error *error)
 {
     for (size_t i = 0; i < input->item_count; i++)
@@ -192,8 +185,9 @@ static void iterate(struct fit *fit, const struct consensus_settings *settings,
     }
 }
 
-bool consensus_fit(const struct consensus_input *input, const struct consensus_settings *settings,
-                   struct consensus_output *output, struct base_error *error)
+bool consensus_fit_two_class(const struct consensus_input *input,
+                             const struct consensus_settings *settings,
+                             struct consensus_output *output, struct base_error *error)
 {
     *output = (struct consensus_output){0};
     if (!in_range(input, error))
