@@ -194,6 +194,7 @@ CREATE TABLE candidate (
     id INTEGER NOT NULL REFERENCES mark (id), -- the group's oldest mark
     star INTEGER NOT NULL REFERENCES star (id),
     light_curve INTEGER NOT NULL REFERENCES light_curve (id),
+    batch INTEGER NOT NULL REFERENCES batch (id), -- of the light curve
     starts REAL NOT NULL,
     ends REAL NOT NULL,
     mid REAL,
@@ -226,16 +227,16 @@ CREATE TABLE candidate (
     flags INTEGER NOT NULL,
     PRIMARY KEY (run, id)
 ) STRICT, WITHOUT ROWID;
--- One for each order of the list. The probability at the end lets a least one be asked for without
--- reading the candidate itself.
-CREATE INDEX candidate_probability ON candidate (run, probability, id);
-CREATE INDEX candidate_snr ON candidate (run, snr, id, probability);
-CREATE INDEX candidate_depth ON candidate (run, depth_ppm, id, probability);
-CREATE INDEX candidate_duration ON candidate (run, duration_h, id, probability);
-CREATE INDEX candidate_star ON candidate (run, star, id, probability);
-CREATE INDEX candidate_mid ON candidate (run, mid, id, probability);
-CREATE INDEX candidate_looks ON candidate (run, looks, id, probability);
-CREATE INDEX candidate_marks ON candidate (run, marks, id, probability);
+-- One for each order of the list. What stands after the id lets the list be narrowed without
+-- reading the candidates themselves.
+CREATE INDEX candidate_probability ON candidate (run, probability, id, batch);
+CREATE INDEX candidate_snr ON candidate (run, snr, id, probability, batch);
+CREATE INDEX candidate_depth ON candidate (run, depth_ppm, id, probability, batch);
+CREATE INDEX candidate_duration ON candidate (run, duration_h, id, probability, batch);
+CREATE INDEX candidate_star ON candidate (run, star, id, probability, batch);
+CREATE INDEX candidate_mid ON candidate (run, mid, id, probability, batch);
+CREATE INDEX candidate_looks ON candidate (run, looks, id, probability, batch);
+CREATE INDEX candidate_marks ON candidate (run, marks, id, probability, batch);
 
 CREATE TABLE member (
     run INTEGER NOT NULL REFERENCES consensus_run (id),

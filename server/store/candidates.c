@@ -75,14 +75,11 @@ static bool fill_candidate(sqlite3_stmt *row, struct base_arena *arena, void *it
 #define LEAST "c.probability >= ?2 "
 /* + keeps the planner from taking the index of probabilities where another is in order already. */
 #define LEAST_ASIDE "+c.probability >= ?2 "
-#define VERDICT "AND (?4 = '' OR iif(?4 = 'none', '', ?4) = " LATEST ") "
-#define IN_BATCH                                                                                   \
-    "AND (?3 = 0 OR EXISTS (SELECT 1 FROM light_curve l WHERE l.id = c.light_curve"                \
-    " AND l.batch = ?3)) "
+#define ALSO "AND (?3 = 0 OR c.batch = ?3) AND (?4 = '' OR iif(?4 = 'none', '', ?4) = " LATEST ") "
 #define OF_STAR "AND c.star = ?5 "
 
-/* What narrows the list decides which question is put. */
-enum narrowed { BY_NOTHING, BY_VERDICT, BY_BATCH, BY_STAR, NARROWED_COUNT };
+/* Over all stars, or those of one. */
+enum narrowed { BY_NOTHING, BY_STAR, NARROWED_COUNT };
 
 /* Ties stand in the direction of the order, so that an index can be walked either way; what was not
  * measured comes last in both. */
@@ -95,9 +92,7 @@ enum narrowed { BY_NOTHING, BY_VERDICT, BY_BATCH, BY_STAR, NARROWED_COUNT };
     }
 #define ORDERED(from, column, least)                                                               \
     {                                                                                              \
-        DIRECTED(from, column, least), DIRECTED(from, column, least VERDICT),                      \
-            DIRECTED(from, column, least IN_BATCH VERDICT),                                        \
-            DIRECTED(from, column, LEAST_ASIDE IN_BATCH VERDICT OF_STAR)                           \
+        DIRECTED(from, column, least ALSO), DIRECTED(from, column, LEAST_ASIDE ALSO OF_STAR)       \
     }
 /* A column's name cannot be a bound value, hence one constant question for each. */
 static const char *const ordered[][NARROWED_COUNT][2] = {
@@ -112,10 +107,8 @@ static const char *const ordered[][NARROWED_COUNT][2] = {
 static const struct {
     const char *sql, *kinds; /* the values up to the last that the question takes */
 } counted[NARROWED_COUNT] = {
-    [BY_NOTHING] = {"SELECT count(*) " BY_RUN LEAST, "ir"},
-    [BY_VERDICT] = {"SELECT count(*) " BY_RUN LEAST VERDICT, "irit"},
-    [BY_BATCH] = {"SELECT count(*) " BY_RUN LEAST IN_BATCH VERDICT, "irit"},
-    [BY_STAR] = {"SELECT count(*) " BY_RUN LEAST_ASIDE IN_BATCH VERDICT OF_STAR, "iriti"}};
+    [BY_NOTHING] = {"SELECT count(*) " BY_RUN LEAST ALSO, "irit"},
+    [BY_STAR] = {"SELECT count(*) " BY_RUN LEAST_ASIDE ALSO OF_STAR, "iriti"}};
 
 /* The query with names turned into ids. */
 struct narrowing {
@@ -149,10 +142,7 @@ static bool narrow(struct store *store, const struct store_candidate_query *quer
         return false;
     out->empty = out->run == 0 || (query->batch[0] != '\0' && out->batch == 0) ||
                  (query->star[0] != '\0' && out->star == 0);
-    out->by = out->star != 0              ? BY_STAR
-              : out->batch != 0           ? BY_BATCH
-              : query->verdict[0] != '\0' ? BY_VERDICT
-                                          : BY_NOTHING;
+    out->by = out->star != 0 ? BY_STAR : BY_NOTHING;
     return true;
 }
 

@@ -12,12 +12,14 @@ static bool put_candidate(struct db *db, int64_t run, const struct store_candida
                           struct base_error *error)
 {
     static const char sql[] =
-        "INSERT INTO candidate (run, id, star, light_curve, starts, ends, mid, mid_error,"
+        "INSERT INTO candidate (run, id, star, light_curve, batch, starts, ends, mid, mid_error,"
         " probability, log_odds, marks_only_probability, term_looks, term_time, term_snr,"
         " term_prior, looks, marks, snr, depth_ppm, depth_error_ppm, duration_h, duration_error_h,"
         " ingress_fraction, covered, gap_distance, asymmetry, spread_starts, spread_ends, period,"
-        " period_error, epoch, transits, other_stars, flags) VALUES (?, ?, ?, ?, ?, ?, ?, ?, ?, ?,"
-        " ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?)";
+        " period_error, epoch, transits, other_stars, flags) VALUES (?1, ?2, ?3, ?4,"
+        " (SELECT batch FROM light_curve WHERE id = ?4), ?5, ?6, ?7, ?8, ?9, ?10, ?11, ?12, ?13,"
+        " ?14, ?15, ?16, ?17, ?18, ?19, ?20, ?21, ?22, ?23, ?24, ?25, ?26, ?27, ?28, ?29, ?30,"
+        " ?31, ?32, ?33, ?34)";
     return db_run(db, error, sql, "iiiirrrrrrrrrrriirrrrrrrrrrrrrriii", run, c->id, c->star,
                   c->light_curve, c->starts_d, c->ends_d, c->mid_d, c->mid_error_d, c->probability,
                   c->log_odds, c->marks_only_probability, c->term_looks, c->term_time, c->term_snr,
