@@ -51,7 +51,7 @@ export function makeRows(model) {
     );
     const body = el('tbody');
     const unitButton = el('button', { type: 'button', class: 'plain unit' });
-    const depthHead = el('th', { scope: 'col' }, 'Depth ', unitButton);
+    const depthHead = el('th', { scope: 'col', class: 'depth' }, 'Depth, ', unitButton);
     const table = el(
         'table',
         { class: 'tide' },
@@ -67,7 +67,7 @@ export function makeRows(model) {
                 el('th', { scope: 'col' }, 'Length, h'),
                 depthHead,
                 el('th', { scope: 'col' }, 'Sure?'),
-                el('td', {})
+                el('th', { scope: 'col' }, el('span', { class: 'unseen' }, 'Delete'))
             )
         ),
         body

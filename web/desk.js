@@ -71,9 +71,11 @@ function drawLoupeNow() {
     const paper = paperOf(canvas, width, height);
     const point = model.pointAt(model.cursor.time);
     if (paper !== null) {
-        const view = loupeView(model.curve, model.whole, model.span, model.cursor.time, 12 * model.step);
+        const scale = (model.span.t1 - model.span.t0) / strip.plot().width;
+        const { time } = model.cursor;
+        const view = loupeView(model.curve, model.whole, time, scale, width, 12 * model.step);
         const flux = model.cursor.flux ?? point?.flux ?? null;
-        drawLoupe(paper, inks, model.curve, view, { time: model.cursor.time, flux }, shownMarks(model));
+        drawLoupe(paper, inks, model.curve, view, { time, flux }, shownMarks(model));
     }
     const flux = point === null ? 'no points' : `flux ${format.flux(point.flux)}`;
     say(byPart('reading'), `day ${format.time(model.cursor.time)} · ${flux}`);

@@ -3,17 +3,18 @@ import { drawPoints } from './draw-points.js';
 import { drawMark } from './draw-strip.js';
 import { fluxFit, fluxToY, spanWithin, timeToX } from './geometry.js';
 
-const TIMES_LARGER = 6;
+const TIMES_LARGER = 5;
 
 /**
- * What the loupe shows: a sixth of the strip's window about a time, with all its points.
+ * What the loupe shows: about a time, drawn five times larger than on the strip.
  * @param {{times: ArrayLike<number>, flux: ArrayLike<number>}} curve
- * @param {import('./geometry.js').Span} whole @param {import('./geometry.js').Span} shown
- * @param {number} time @param {number} leastDays
+ * @param {import('./geometry.js').Span} whole @param {number} time
+ * @param {number} daysPerPixel of the strip @param {number} width CSS pixels of the loupe
+ * @param {number} leastDays
  * @returns {import('./geometry.js').View}
  */
-export function loupeView(curve, whole, shown, time, leastDays) {
-    const half = Math.max((shown.t1 - shown.t0) / TIMES_LARGER, leastDays) / 2;
+export function loupeView(curve, whole, time, daysPerPixel, width, leastDays) {
+    const half = Math.max((daysPerPixel * width) / TIMES_LARGER, leastDays) / 2;
     const span = spanWithin({ t0: time - half, t1: time + half }, whole);
     return { ...span, ...fluxFit(curve.times, curve.flux, span) };
 }

@@ -182,10 +182,23 @@ export function drawMark({ pen }, inks, view, plot, mark) {
     pen.font = `bold 13px ${inks.font}`;
     pen.textAlign = 'left';
     pen.textBaseline = 'alphabetic';
-    const above = rect.top - 5 > 12 ? rect.top - 5 : rect.top + rect.height + 14;
-    pen.fillText(mark.name + (mark.sure ? '' : ' ?'), Math.max(rect.left, plot.left + 2), above);
+    if (right > plot.left) drawName(pen, inks, mark, Math.max(left, plot.left + 2), rect);
     if (mark.chosen) drawHandles(pen, inks, rect);
     pen.restore();
+}
+
+/** Above the box, or below it where the paper ends; with a rim of ground, to be read over points.
+ * @param {CanvasRenderingContext2D} pen @param {Inks} inks @param {Shown} mark @param {number} left
+ * @param {import('./paper.js').Rect} rect */
+function drawName(pen, inks, mark, left, rect) {
+    const base = rect.top - 6 > 12 ? rect.top - 6 : rect.top + rect.height + 15;
+    const text = mark.name + (mark.sure ? '' : ' ?');
+    pen.strokeStyle = inks.ground;
+    pen.lineWidth = 4;
+    pen.lineJoin = 'round';
+    pen.strokeText(text, left, base);
+    pen.fillText(text, left, base);
+    pen.strokeStyle = inks.own;
 }
 
 /** @param {CanvasRenderingContext2D} pen @param {Inks} inks @param {import('./paper.js').Rect} rect */
