@@ -121,6 +121,13 @@ $(OUT)/fuzz/%: tests/fuzz/%.c $(foreach r,$(pure_rooms),$(call sources,$(r)))
 	clang $(CPPFLAGS) -std=c17 -g -O1 -pthread -fsanitize=fuzzer,address,undefined \
 		-fno-sanitize-recover=undefined $^ $(foreach r,$(pure_rooms),$(LIBS_$(r))) -lz -o $@
 
+# The parsers of http/ that read what strangers send; they need nothing of the library.
+http_parsers := $(addprefix server/http/,accept.c cookie.c proxy.c uri.c) $(call sources,base)
+$(OUT)/fuzz/query $(OUT)/fuzz/cookie: $(OUT)/fuzz/%: tests/fuzz/%.c $(http_parsers)
+	@mkdir -p $(@D)
+	clang $(CPPFLAGS) -std=c17 -g -O1 -pthread -fsanitize=fuzzer,address,undefined \
+		-fno-sanitize-recover=undefined $^ $(LIBS_base) -o $@
+
 # ---- what is needed from Debian ----
 build_packages := gcc libc6-dev gzip libmicrohttpd-dev libsqlite3-dev libjansson-dev libcfitsio-dev \
 	libsodium-dev libgsl-dev libarchive-dev libcurl4-openssl-dev libunistring-dev zlib1g-dev

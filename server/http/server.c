@@ -22,6 +22,7 @@
 /* Buckets of each rate limit; 24 bytes each. */
 #define LIMIT_SLOTS 65536
 #define BODY_BYTES_LEAST (64u * 1024u * 1024u)
+#define TLS_PRIORITIES "NORMAL:-VERS-ALL:+VERS-TLS1.3:+VERS-TLS1.2"
 #define PEM_MAX (1024 * 1024)
 
 /* ---- settings ------------------------------------------------------------------------------- */
@@ -194,7 +195,7 @@ static bool daemon_start(struct http_server *server, const struct http_options *
                          struct base_error *error)
 {
     unsigned flags = MHD_USE_EPOLL_INTERNAL_THREAD | MHD_ALLOW_SUSPEND_RESUME | MHD_USE_ERROR_LOG;
-    struct MHD_OptionItem more[4];
+    struct MHD_OptionItem more[5];
     size_t used = 0;
     if (options->threads > 1)
         more[used++] =
@@ -203,6 +204,8 @@ static bool daemon_start(struct http_server *server, const struct http_options *
         flags |= MHD_USE_TLS;
         more[used++] = (struct MHD_OptionItem){MHD_OPTION_HTTPS_MEM_CERT, 0, server->tls_cert};
         more[used++] = (struct MHD_OptionItem){MHD_OPTION_HTTPS_MEM_KEY, 0, server->tls_key};
+        more[used++] =
+            (struct MHD_OptionItem){MHD_OPTION_HTTPS_PRIORITIES, 0, (char *)TLS_PRIORITIES};
     }
     more[used] = (struct MHD_OptionItem){MHD_OPTION_END, 0, NULL};
     server->daemon = MHD_start_daemon(
