@@ -4,12 +4,12 @@
  * somebody seen once or twice is neither trusted nor doubted without reason.
  */
 #include <assert.h>
-#include <gsl/gsl_cdf.h>
 #include <math.h>
 #include <stdlib.h>
 #include <string.h>
 
 #include "ebbmark/consensus_model.h"
+#include "interval.h"
 
 #define PRIOR_LOOKS 4.0 /* weight of the crowd's rate against a reviewer's own, in looks */
 #define HIT_START 0.7   /* where the crowd's rates start, and what they are drawn to a little */
@@ -145,8 +145,8 @@ static struct consensus_rate rate_of(double value, double marks, double looks, d
     double a = marks + PRIOR_LOOKS * crowd, b = looks - marks + PRIOR_LOOKS * (1.0 - crowd);
     a = fmax(a, 1e-3);
     b = fmax(b, 1e-3);
-    return (struct consensus_rate){value, gsl_cdf_beta_Pinv(0.05, a, b),
-                                   gsl_cdf_beta_Pinv(0.95, a, b)};
+    return (struct consensus_rate){value, interval_beta_quantile(0.05, a, b),
+                                   interval_beta_quantile(0.95, a, b)};
 }
 
 static void answer(const struct fit *fit, struct consensus_output *out)
