@@ -13,10 +13,11 @@ bool store_verdict_add(struct store *store, int64_t candidate, int64_t person, c
                      "iitti", candidate, person, verdict, note, now_ms);
     if (ok)
         *id = sqlite3_last_insert_rowid(db->handle);
-    else if (why.kind == BASE_CONFLICT)
-        (void)base_fail(error, BASE_INVALID,
-                        "A verdict is keep, reject or unsure, on a candidate "
-                        "that there is.");
+    else if (why.kind == BASE_INVALID)
+        (void)base_fail_field(error, BASE_INVALID, "verdict",
+                              "A verdict is keep, reject or unsure.");
+    else if (why.kind == BASE_NOT_FOUND)
+        (void)base_fail(error, BASE_NOT_FOUND, "There is no such candidate, or no such person.");
     else if (error != NULL)
         *error = why;
     return db_write_end(store, ok, error);
