@@ -12,6 +12,7 @@ import concurrent.futures
 import os
 import pathlib
 import re
+import shutil
 import subprocess
 import sys
 import time
@@ -41,6 +42,9 @@ def run(name, command, environment):
     """Run one program; its counts, with what went wrong."""
     started = time.monotonic()
     log = LOGS / (name.replace('/', '-') + '.log')
+    if shutil.which(str(ROOT / command[0])) is None and shutil.which(command[0]) is None:
+        print(f'FAIL  {name}: {command[0]} was not built', flush=True)
+        return 0, 1, 0
     with open(log, 'wb') as out:
         process = subprocess.Popen(command, cwd=ROOT, stdout=out, stderr=subprocess.STDOUT,
                                    stdin=subprocess.DEVNULL, env={**os.environ, **environment},
