@@ -51,9 +51,9 @@ bool points_pack(const struct store_points *points, struct points_blob *out,
         shuffle(plain + 12 * n, (const unsigned char *)points->trend, n, 4);
         if (points->error != NULL)
             shuffle(plain + 16 * n, (const unsigned char *)points->error, n, 4);
-        out->checksum = (uint32_t)crc32_z(0, plain, size);
         ok = compress2(out->data, &bound, plain, (uLong)size, 4) == Z_OK;
         out->size = bound;
+        out->checksum = (uint32_t)crc32_z(0, out->data, bound);
     }
     free(plain);
     if (!ok) {
@@ -74,9 +74,10 @@ bool points_unpack(const unsigned char *data, size_t size, uint32_t checksum, si
                    bool has_error, struct base_arena *arena, struct store_points *out,
                    struct base_error *error)
 {
-    /* Before taking memory: could these bytes hold so many points at all? */
+    /* Before taking memory: are these the bytes, and could they hold so many points at all? */
     if (data == NULL || count == 0 || count > POINTS_MAX ||
-        plain_size(count, has_error) / ZLIB_RATIO_MAX > size)
+        plain_size(count, has_error) / ZLIB_RATIO_MAX > size ||
+        (uint32_t)crc32_z(0, data, size) != checksum)
         return damaged(error);
     size_t need = plain_size(count, has_error), columns = has_error ? 3 : 2;
     uLong got = (uLong)need;
@@ -86,8 +87,7 @@ bool points_unpack(const unsigned char *data, size_t size, uint32_t checksum, si
     bool ok = plain != NULL && time != NULL && values != NULL;
     if (!ok)
         (void)db_no_memory(error);
-    else if (uncompress(plain, &got, data, (uLong)size) != Z_OK || got != need ||
-             (uint32_t)crc32_z(0, plain, need) != checksum)
+    else if (uncompress(plain, &got, data, (uLong)size) != Z_OK || got != need)
         ok = damaged(error);
     if (ok) {
         unshuffle((unsigned char *)time, plain, count, 8);

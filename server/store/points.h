@@ -1,5 +1,5 @@
 /* Light-curve points as one blob: columns one after another, their bytes shuffled so that like
- * bytes stand together, then zlib. */
+ * bytes stand together, then zlib, which adds a check sum of what was compressed. */
 #ifndef STORE_POINTS_H
 #define STORE_POINTS_H
 
@@ -8,7 +8,7 @@
 struct points_blob {
     unsigned char *data; /* malloc'd; the caller frees it */
     size_t size;
-    uint32_t checksum; /* crc32 of the columns before compression */
+    uint32_t checksum; /* crc32 of the blob */
 };
 bool points_pack(const struct store_points *points, struct points_blob *out,
                  struct base_error *error);
