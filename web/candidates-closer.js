@@ -78,7 +78,7 @@ export function makeCloser({ onVerdict }) {
         );
     byPart('verdict-form').addEventListener('submit', (event) => event.preventDefault());
 
-    /** Marks as thin bars under the curve, darker for more weight.
+    /** Marks as thin bars under the curve, stronger for more weight.
      * @param {any} one */
     async function draw(one) {
         const bars = Math.min(one.marks.length, 12) * BAR;
@@ -104,7 +104,7 @@ export function makeCloser({ onVerdict }) {
         say(byPart('closer-caution'), one.caution);
         say(
             byPart('closer-axis'),
-            `Days ${format.fixed(span.t0, 2)} to ${format.fixed(span.t1, 2)}, ${one.time_reference}; trend removed. Hatched: the candidate. Bars: each reviewer’s mark, darker for more weight.`
+            `Days ${format.fixed(span.t0, 2)} to ${format.fixed(span.t1, 2)}, ${one.time_reference.replace(' - ', ' \u2212 ')}; trend removed. Hatched: the candidate. Bars: each reviewer’s mark, stronger for more weight.`
         );
         const why = [
             `Probability ${format.probability(one.probability)}.`,

@@ -210,9 +210,13 @@ function turnTo(which) {
     show(byPart('sheet'), which === 'sheet' && model.sheet !== null);
 }
 
-/** @param {string} title @param {string} text @param {string} action */
-function calm(title, text, action) {
+/** What the calm sheet's button does. @type {() => void} */
+let calmAct = () => undefined;
+
+/** @param {string} title @param {string} text @param {string} action @param {() => void} act */
+function calm(title, text, action, act) {
     model.close();
+    calmAct = act;
     say(byPart('calm-title'), title);
     say(byPart('calm-text'), text);
     say(byPart('look-again'), action);
@@ -229,7 +233,8 @@ async function next() {
             calm(
                 'Nothing is left to look at',
                 'You have seen every segment that needs you now. More may come as others finish theirs, or when new stars are loaded.',
-                'Look again'
+                'Look again',
+                () => void next()
             );
             return;
         }
@@ -245,7 +250,7 @@ function takeFailed(error) {
         welcome();
         return;
     }
-    calm('The next segment could not be fetched', sentence(error), 'Try again');
+    calm('The next segment could not be fetched', sentence(error), 'Try again', () => void next());
     const passing =
         error instanceof api.Unreached ||
         (error instanceof api.Problem && (error.status >= 500 || error.status === 429));
@@ -256,14 +261,14 @@ function takeFailed(error) {
 
 /** @param {Sheet} sheet @param {{said: unknown, seconds: number}} [kept] */
 function showSheet(sheet, kept) {
-    const first = model.sheet === null;
+    const elsewhere = document.activeElement?.closest('dialog, .masthead') ?? null;
     byPart('sheet').hidden = false;
     stopwatch.restart(kept?.seconds ?? 0);
     stopwatch.setSeen(document.visibilityState === 'visible');
     model.open(sheet, kept?.said);
     turnTo('sheet');
     measure();
-    if (!first || document.activeElement === document.body) byPart('strip').focus();
+    if (elsewhere === null) byPart('strip').focus();
     supply.prepare();
 }
 
@@ -396,7 +401,7 @@ function wire() {
     onPress('redo', () => model.redo());
     onPress('no-dips', finish);
     onPress('send', finish);
-    onPress('look-again', () => void next());
+    onPress('look-again', () => calmAct());
     onPress('help-open', openHelp);
     const single = /** @type {HTMLInputElement} */ (byPart('single-key'));
     single.checked = preference('single-key', 'on') === 'on';
@@ -427,8 +432,7 @@ async function start() {
         if (who === null) welcome();
         else signedIn(who);
     } catch (error) {
-        calm('The Desk cannot be set up now', sentence(error), 'Try again');
-        onPress('look-again', () => location.reload());
+        calm('The Desk cannot be set up now', sentence(error), 'Try again', () => location.reload());
     }
 }
 

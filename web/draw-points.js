@@ -23,7 +23,7 @@ export function drawPoints(paper, inks, curve, view, plot, { dot = 0 } = {}) {
     pen.clip();
     if (to - from > plot.width * DOTS_TO_A_PIXEL) drawColumns(paper, inks, curve, view, plot);
     else {
-        const size = dot || Math.min(3.5, Math.max(1.5, (plot.width / Math.max(to - from, 1)) * 0.6));
+        const size = dot || Math.min(3.5, Math.max(2, (plot.width / Math.max(to - from, 1)) * 0.6));
         pen.fillStyle = inks.ink;
         for (let at = from; at < curve.times.length && at <= to; at++) {
             const x = timeToX(view, plot, curve.times[at]);

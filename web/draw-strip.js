@@ -172,8 +172,8 @@ export function drawMark({ pen }, inks, view, plot, mark) {
     pen.strokeStyle = inks.own;
     pen.fillStyle = inks.own;
     pen.lineWidth = 1;
-    pen.globalAlpha = mark.chosen ? 0.75 : 0.5;
-    hatch(pen, rect, mark.sure ? 7 : 14, 1);
+    pen.globalAlpha = mark.chosen ? 0.55 : 0.4;
+    hatch(pen, rect, mark.sure ? 9 : 18, 1);
     pen.globalAlpha = 1;
     pen.lineWidth = mark.chosen ? 2.5 : 1.75;
     pen.setLineDash(mark.sure ? [] : [6, 4]);
