@@ -61,7 +61,7 @@ int cli_export(int argc, char **argv)
         (void)fprintf(stderr, "ebbmark: there is no format '%s'.\n", format_name);
         return cli_usage("export", false);
     }
-    if (!cli_integer_read("run", run_text, 1, 1ll << 53, &run))
+    if (!cli_integer_read("run", run_text, 1, 1LL << 53, &run))
         return CLI_USAGE;
     struct base_error error = {0};
     struct cli_campaign opened;

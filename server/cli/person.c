@@ -67,7 +67,7 @@ static bool list(struct store *store, struct base_error *error)
         struct store_person *people = NULL;
         ok = arena != NULL ? store_people_list(store, arena, after, 500, &people, &count, error)
                            : base_fail(error, BASE_MEMORY, "There is no memory for the list.");
-        for (size_t i = 0; ok && i < count; i++) {
+        for (size_t i = 0; ok && people != NULL && i < count; i++) {
             char joined[BASE_CLOCK_SIZE];
             (void)printf("%6" PRId64 "  %-9s  %s  %s%s%s\n", people[i].id,
                          role_names[people[i].role],

@@ -31,7 +31,7 @@ int cli_rehearse(int argc, char **argv)
         return cli_usage("rehearse", help);
     if (!cli_integer_read("reviewers", reviewers_text, 1, 10000, &reviewers) ||
         !cli_integer_read("looks", looks_text, 0, 1000000, &looks) ||
-        !cli_integer_read("seed", seed_text, 0, 1ll << 53, &seed))
+        !cli_integer_read("seed", seed_text, 0, 1LL << 53, &seed))
         return CLI_USAGE;
     bool on_terminal = isatty(STDERR_FILENO) == 1;
     const struct rehearse_options what = {.server = server,
