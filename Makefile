@@ -164,6 +164,16 @@ test: deps-test
 reference-programs: $(patsubst %.c,$(B)/%,$(wildcard tests/reference/*.c))
 bench-programs: $(patsubst %.c,$(B)/%,$(wildcard tests/bench/*.c))
 
+# Ratios against the bare libraries, measured in one run. BENCH="handout fits_load" for some of it.
+bench: deps-test
+	@$(MAKE) --no-print-directory -s -j2 build bench-programs
+	@tests/bench/run.sh $(B) $(BENCH)
+
+# The consensus against vote counting and the plain two-class form, over seeds and mixes of reviewers.
+evaluate: deps-build
+	@$(MAKE) --no-print-directory -s -j2 $(B)/tests/bench/evaluate
+	@$(B)/tests/bench/evaluate | tee $(OUT)/evaluation.txt
+
 # ---- the source itself ----
 c_sources = $(shell git ls-files 'server/*.c' 'server/*.h' 'include/*.h' 'tests/*.c' 'tests/*.h')
 format: deps-lint
