@@ -92,12 +92,16 @@ struct http_options {
     const struct base_log *log;
 };
 
-/* Listen and serve. BASE_CONFLICT when the address is taken. The caller stops it. */
+/* Listen and serve. BASE_CONFLICT when the address is taken. The caller stops it. Raises the
+ * process's limit of open files as far as the connections need and the system allows. */
 bool http_start(const struct http_options *options, struct http_server **out,
                 struct base_error *error);
 /* The port in use. */
 uint16_t http_port(const struct http_server *server);
-/* Stop accepting, let what is in flight finish for at most `grace_s`, then close and free. */
+/* Stop accepting, let what is in flight finish for at most `grace_s`, then close and free. Handlers
+ * that run on a worker are waited for whatever they take; exchanges that are still somebody's after
+ * HTTP_LATER get the answer "stopping" in their place, and may be answered and resumed, to no
+ * effect, after this has returned. */
 void http_stop(struct http_server *server, double grace_s);
 /* Drop the cached identity of a person (signed out, suspended, role changed), or of all (0). */
 void http_identity_forget(struct http_server *server, int64_t person);
@@ -163,19 +167,23 @@ enum http_result http_answer_bytes(struct http_exchange *exchange, unsigned stat
                                    const char *media_type, const void *data, size_t size);
 
 /* An immutable body kept for many answers: plain and, where smaller, deflated by gzip; with an ETag
- * for If-None-Match. Reference-counted and thread-safe. http_body_make copies data. */
+ * for If-None-Match (the compressed form has one of its own, "…-gzip"). Reference-counted and
+ * thread-safe. http_kept_make copies data; etag (quoted) and cache_control may be NULL; NULL when
+ * out of memory. */
 struct http_kept_body;
 struct http_kept_body *http_kept_make(const char *media_type, const void *data, size_t size,
                                       const char *etag, const char *cache_control);
 void http_kept_hold(struct http_kept_body *body);
 void http_kept_drop(struct http_kept_body *body);
 size_t http_kept_size(const struct http_kept_body *body); /* bytes held, both forms */
-/* 200, or 304 when If-None-Match has its ETag. */
+/* 200, or 304 when If-None-Match has its ETag. Says Vary: Accept, Accept-Encoding by itself. The
+ * fastest answer there is, unless http_answer_header was called. */
 enum http_result http_answer_kept(struct http_exchange *exchange, struct http_kept_body *body);
 
 /* A stream pulled as the client reads: next() writes at most `room` bytes, returns how many, 0 at
  * the end, -1 on failure (the connection is then cut, so that a short file is not taken for a whole
- * one). done() is called once, whatever happens. */
+ * one). done() is called once, whatever happens. On an HTTP_SLOW route next() runs on a worker,
+ * else on the server's own thread, where it must not take long. */
 enum http_result http_answer_stream(struct http_exchange *exchange, unsigned status,
                                     const char *media_type,
                                     long (*next)(void *state, char *buffer, size_t room),

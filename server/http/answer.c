@@ -67,7 +67,7 @@ void *http_gzip(const void *data, size_t size, int level, size_t *out_size)
     /* One byte less than the plain form: what does not fit is not worth sending. */
     unsigned char *out = malloc(size);
     if (out != NULL) {
-        stream.next_in = (unsigned char *)(uintptr_t)data;
+        stream.next_in = (unsigned char *)data;
         stream.avail_in = (uInt)size;
         stream.next_out = out;
         stream.avail_out = (uInt)(size - 1);

@@ -46,52 +46,50 @@ struct http_exchange {
     struct http_server *server;
     struct MHD_Connection *connection;
     struct http_connection *line; /* ours beside the library's; the server's threads only */
-    atomic_uint holders;          /* the connection, and a handler that answers later */
-    enum http_phase phase;
     double began_s;
+    atomic_uint holders; /* the connection, and a handler that answers later */
+    enum http_phase phase;
     char id[17];
 
     /* the request */
+    bool is_head, is_secure, wants_gzip, headers_copied;
+    bool has_cookie;    /* the secret that came is a cookie's */
+    bool handed_over;   /* to a handler that answers later; the server's threads only */
     const char *method; /* the library's text: the server's threads only */
-    bool is_head;
-    char *address; /* the target as sent, for the log */
+    char *address;      /* the target as sent, for the log */
     struct http_target target;
     const char *known[HTTP_KNOWN_COUNT]; /* the library's text: the server's threads only */
     struct http_pair *headers;           /* copies of all of them, once somebody asked */
-    bool headers_copied;
     size_t head_size, header_count;
     const char *fault; /* of the head's framing: what is wrong with it, or NULL */
     struct http_ip ip;
     char ip_text[HTTP_IP_SIZE]; /* when somebody asked */
-    bool is_secure, wants_gzip;
     const struct http_route *route;
     struct http_kept_body *file; /* a static file, when there is no route */
     struct http_identity identity;
-    bool has_cookie;        /* the secret that came is a cookie's */
     const char *refused_at; /* the step that answered in the handler's place */
-    bool handed_over;       /* to a handler that answers later; the server's threads only */
-    unsigned sent_status;   /* 0: the library was given no answer; the server's threads only */
 
     /* the body */
-    enum http_body_plan body_plan;
     char *body;
     size_t body_size, body_capacity, body_declared, body_dropped;
-    bool body_length_known;
     json_t *json;
-
-    struct base_arena *arena;
+    enum http_body_plan body_plan;
+    bool body_length_known;
 
     /* the answer */
+    bool answer_failed;   /* some part of it could not be made */
+    unsigned status;      /* 0: none was set yet */
+    unsigned sent_status; /* 0: the library was given none; the server's threads only */
     struct http_pair *extra, **extra_end; /* headers asked for */
-    unsigned status;                      /* 0: none was set yet */
     struct MHD_Response *response;        /* NULL with a status: it could not be made */
     struct http_kept_body *kept;          /* in its place: a shell of a kept body, which is held */
     struct http_shell *shell;
-    bool answer_failed; /* some part of it could not be made */
+
+    struct base_arena *arena;
 
     /* waiting lock */
-    bool suspended, resumed, abandoned;
     struct http_exchange *waiting_older, *waiting_newer;
+    bool suspended, resumed, abandoned;
 };
 
 /* A new exchange for a request line with this target; NULL when out of memory. */

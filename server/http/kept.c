@@ -107,9 +107,9 @@ struct http_kept_body *http_kept_borrow(const struct http_static_file *file,
         return NULL;
     body->borrowed = true;
     /* Never written to: the library's signature has no const, and nor has ours for owned bytes. */
-    body->data[0] = (unsigned char *)(uintptr_t)file->data;
+    body->data[0] = (unsigned char *)file->data;
     body->size[0] = file->size;
-    body->data[1] = (unsigned char *)(uintptr_t)file->gzip;
+    body->data[1] = (unsigned char *)file->gzip;
     body->size[1] = file->gzip_size;
     return body;
 }
@@ -257,7 +257,8 @@ enum http_result http_answer_kept(struct http_exchange *exchange, struct http_ke
                                http_etag_is_listed(listed, body->etag_gzip)))
             return answer_apart(exchange, body, 304);
     }
-    if (exchange->extra != NULL || atomic_load(&exchange->server->stopping))
+    if (exchange->answer_failed || exchange->extra != NULL ||
+        atomic_load(&exchange->server->stopping))
         return answer_apart(exchange, body, 200);
     if (http_kept_lend(body, exchange))
         exchange->status = 200;

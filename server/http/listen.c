@@ -58,14 +58,15 @@ static bool open_socket(const struct addrinfo *address, int *out)
 
 static uint16_t port_of(int fd)
 {
-    struct sockaddr_storage address = {0};
+    union {
+        struct sockaddr any;
+        struct sockaddr_in four;
+        struct sockaddr_in6 six;
+    } address = {0};
     socklen_t size = sizeof address;
-    if (getsockname(fd, (struct sockaddr *)&address, &size) != 0)
+    if (getsockname(fd, &address.any, &size) != 0)
         return 0;
-    in_port_t port = address.ss_family == AF_INET6
-                         ? ((const struct sockaddr_in6 *)(const void *)&address)->sin6_port
-                         : ((const struct sockaddr_in *)(const void *)&address)->sin_port;
-    return ntohs(port);
+    return ntohs(address.any.sa_family == AF_INET6 ? address.six.sin6_port : address.four.sin_port);
 }
 
 bool http_listen(const char *where, int *fd, uint16_t *port, struct base_error *error)

@@ -97,7 +97,7 @@ static bool network_read(const char *text, struct http_network *out, struct base
 {
     const char *slash = strchr(text, '/');
     size_t length = slash == NULL ? strlen(text) : (size_t)(slash - text);
-    char address[HTTP_IP_SIZE];
+    char address[HTTP_IP_SIZE] = "";
     bool ok = length > 0 && length < sizeof address;
     if (ok) {
         memcpy(address, text, length);

@@ -45,7 +45,8 @@ const char *http_query(struct http_exchange *exchange, const char *name)
     return NULL;
 }
 
-/* Copies one header to the end of the list; stops at the first that finds no memory. */
+/* Copies one header to the end of the list. Without memory the answer, whatever it is, becomes an
+ * error: a handler must not take a lost header for one that was not sent. */
 static enum MHD_Result copy_header(void *context, enum MHD_ValueKind kind, const char *name,
                                    const char *value)
 {
@@ -53,12 +54,13 @@ static enum MHD_Result copy_header(void *context, enum MHD_ValueKind kind, const
     (void)kind;
     struct base_arena *arena = http_exchange_arena(exchange);
     struct http_pair *pair = arena == NULL ? NULL : base_arena_take(arena, sizeof *pair);
-    if (pair == NULL)
+    char *copy = pair == NULL ? NULL : base_arena_copy_text(arena, value == NULL ? "" : value);
+    if (copy != NULL)
+        pair->name = base_arena_copy_text(arena, name);
+    if (copy == NULL || pair->name == NULL) {
+        exchange->answer_failed = true;
         return MHD_NO;
-    pair->name = base_arena_copy_text(arena, name);
-    char *copy = base_arena_copy_text(arena, value == NULL ? "" : value);
-    if (pair->name == NULL || copy == NULL)
-        return MHD_NO;
+    }
     for (size_t end = strlen(copy); end > 0 && strchr(" \t", copy[end - 1]) != NULL; end--)
         copy[end - 1] = '\0';
     pair->value = copy;
@@ -113,6 +115,8 @@ const char *http_secret(struct http_exchange *exchange)
     char *copy = arena == NULL ? NULL : base_arena_take(arena, length + 1);
     if (copy != NULL)
         memcpy(copy, secret, length);
+    else if (found)
+        exchange->answer_failed = true;
     return copy;
 }
 
@@ -163,7 +167,8 @@ bool http_body_json(struct http_exchange *exchange, json_t **out)
     json_decref(exchange->json);
     exchange->json = json_loadb(text, size, JSON_REJECT_DUPLICATES, &wrong);
     if (exchange->json == NULL) {
-        if (json_error_code(&wrong) == json_error_out_of_memory)
+        /* It does not always say so with its code, but a fault in the text has a place. */
+        if (json_error_code(&wrong) == json_error_out_of_memory || wrong.line < 1)
             (void)http_answer_problem(exchange, "overloaded", NULL,
                                       "There is no memory to read the body; try again soon.");
         else

@@ -77,10 +77,12 @@ static void put_path(struct line *line, const char *address)
         if (c >= 0x20 && c < 0x7f && c != '"' && c != '\\') {
             *to++ = (char)c;
         } else {
-            memcpy(to, "\\u00", 4);
-            to[4] = digits[c >> 4];
-            to[5] = digits[c & 15];
-            to += 6;
+            *to++ = '\\';
+            *to++ = 'u';
+            *to++ = '0';
+            *to++ = '0';
+            *to++ = digits[c >> 4];
+            *to++ = digits[c & 15];
         }
     }
     line->used = (size_t)(to - line->text);

@@ -79,11 +79,11 @@ static bool pem_read(const char *path, char **out, struct base_error *error)
     int fd = open(path, O_RDONLY | O_CLOEXEC);
     if (fd < 0)
         return base_fail_errno(error, errno, "Opening %s", path);
-    bool ok = true;
     size_t used = 0;
     char *text = malloc(PEM_MAX + 1);
-    if (text == NULL)
-        ok = base_fail(error, BASE_MEMORY, "There is no memory to read %s.", path);
+    bool ok = text != NULL;
+    if (!ok)
+        (void)base_fail(error, BASE_MEMORY, "There is no memory to read %s.", path);
     while (ok && used < PEM_MAX) {
         ssize_t got = read(fd, text + used, PEM_MAX - used);
         if (got < 0)
