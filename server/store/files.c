@@ -179,7 +179,9 @@ bool store_files_add(struct store *store, const struct store_file_new *files, si
     for (size_t i = 0; i < count; i++)
         curves += files[i].curve_count;
     struct points_blob *blobs = calloc(curves > 0 ? curves : 1, sizeof *blobs);
-    bool ok = blobs != NULL || db_no_memory(error);
+    if (blobs == NULL)
+        return db_no_memory(error);
+    bool ok = true;
     for (size_t i = 0; ok && i < count; i++)
         for (size_t k = 0; ok && k < files[i].curve_count; k++)
             ok = points_pack(&files[i].curves[k].points, &blobs[packed++], error);

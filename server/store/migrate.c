@@ -61,17 +61,19 @@ static bool apply(struct store *store, const struct store_migration *step, struc
     char version[96];
     (void)snprintf(version, sizeof version, "PRAGMA application_id = %d; PRAGMA user_version = %d;",
                    HEADER_APPLICATION_ID, step->version);
+    struct base_error why = {0};
     struct db *db = db_write(store, error);
     if (db == NULL)
         return false;
-    bool ok = db_script(db, step->sql, error) && db_script(db, record, error) &&
-              db_run(db, error, insert, "iti", (int64_t)step->version, step->name,
-                     base_clock_unix_ms()) &&
-              db_script(db, version, error);
-    ok = db_write_end(store, ok, error);
+    bool ok =
+        db_script(db, step->sql, &why) && db_script(db, record, &why) &&
+        db_run(db, &why, insert, "iti", (int64_t)step->version, step->name, base_clock_unix_ms()) &&
+        db_script(db, version, &why);
+    ok = db_write_end(store, ok, &why);
     if (ok)
         store->version = step->version;
-    return ok;
+    return ok || base_fail(error, why.kind, "The migration %s failed and changed nothing. %s",
+                           step->name, why.sentence);
 }
 
 static bool back_up(struct store *store, int version, struct base_error *error)
