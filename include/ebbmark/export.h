@@ -14,8 +14,8 @@
 
 enum export_type { EXPORT_INTEGER, EXPORT_REAL, EXPORT_TEXT, EXPORT_BOOLEAN };
 
-struct export_column {
-    const char *name; /* snake_case with the unit in it where a bare number could mislead */
+struct export_column { /* NOLINT(clang-analyzer-optin.performance.Padding): in reading order */
+    const char *name;  /* snake_case with the unit in it where a bare number could mislead */
     enum export_type type;
     const char *unit;        /* VOUnit text, "" for none */
     const char *ucd;         /* IVOA UCD1+, "" for none */

@@ -20,7 +20,8 @@
 #define COLUMNS(X)                                                                                 \
     X(review)                                                                                      \
     X(reviewer)                                                                                    \
-    X(star) X(segment_starts) X(segment_ends) X(submitted) X(mark_starts) X(mark_ends) X(mark_low) \
+    X(star)                                                                                        \
+    X(segment_starts) X(segment_ends) X(submitted) X(mark_starts) X(mark_ends) X(mark_low)         \
         X(mark_high) X(certainty)
 
 enum column {
@@ -63,7 +64,8 @@ struct adding {
 
 static bool no_memory(struct base_error *error)
 {
-    return base_fail(error, BASE_MEMORY, "There is no memory to add reviews.");
+    (void)base_fail(error, BASE_MEMORY, "There is no memory to add reviews.");
+    return false;
 }
 
 static void refuse(struct adding *adding, uint64_t line, const char *reason)
@@ -110,13 +112,18 @@ static bool read_real(const struct adding *adding, enum column column, double *o
 /* Seconds east of UTC from "Z" or "+hh:mm". */
 static bool read_zone(const char *text, long *seconds)
 {
-    int hours = 0, minutes = 0, used = 0;
     *seconds = 0;
     if (strcmp(text, "Z") == 0 || strcmp(text, "z") == 0)
         return true;
-    if ((text[0] != '+' && text[0] != '-') ||
-        sscanf(text + 1, "%2d:%2d%n", &hours, &minutes, &used) != 2 || text[1 + used] != '\0' ||
-        hours < 0 || hours > 23 || minutes < 0 || minutes > 59)
+    static const char form[] = "+00:00";
+    if (strlen(text) != strlen(form) || (text[0] != '+' && text[0] != '-'))
+        return false;
+    for (size_t i = 1; i < strlen(form); i++)
+        if (form[i] == '0' ? text[i] < '0' || text[i] > '9' : text[i] != form[i])
+            return false;
+    long hours = 10L * (text[1] - '0') + (text[2] - '0');
+    long minutes = 10L * (text[4] - '0') + (text[5] - '0');
+    if (hours > 23 || minutes > 59)
         return false;
     *seconds = (text[0] == '-' ? -1L : 1L) * (hours * 3600L + minutes * 60L);
     return true;
@@ -303,7 +310,7 @@ static bool make_review(struct adding *adding, struct store_review_new *out,
                         struct base_error *error)
 {
     struct look *look = &adding->look;
-    struct store_segment segment;
+    struct store_segment segment = {0};
     *out = (struct store_review_new){.submitted_ms = look->submitted_ms,
                                      .mark_count = look->marks.count};
     if (!check_look(look, error) || !find_segment(adding, look, &segment, error))

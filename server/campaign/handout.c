@@ -23,7 +23,8 @@ struct handout {
 
 static bool no_memory(struct base_error *error)
 {
-    return base_fail(error, BASE_MEMORY, "There is no memory to hand out segments.");
+    (void)base_fail(error, BASE_MEMORY, "There is no memory to hand out segments.");
+    return false;
 }
 
 /* ---- building the queue ---- */

@@ -28,6 +28,13 @@ struct campaign {
     struct runner *runner;
 };
 
+/* One log line with one fact. */
+static inline void campaign_tell(const struct campaign *campaign, enum base_log_level level,
+                                 const char *event, const char *key, const char *value)
+{
+    base_log_line(campaign->log, level, event, key, value, (const char *)NULL);
+}
+
 /* Settings in force at opening: the stored ones over the defaults. */
 bool settings_read(struct campaign *campaign, struct base_error *error);
 

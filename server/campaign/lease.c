@@ -126,15 +126,14 @@ bool campaign_may_see(struct campaign *campaign, int64_t person, int64_t segment
     struct base_error error = {0};
     bool may = handout_may_see(campaign->handout, person, segment, base_clock_unix_ms(), &error);
     if (error.kind != BASE_NONE)
-        base_log_line(campaign->log, BASE_LOG_ERROR, "may_see_failed", "detail", error.sentence,
-                      NULL);
+        campaign_tell(campaign, BASE_LOG_ERROR, "may_see_failed", "detail", error.sentence);
     return may;
 }
 
 bool campaign_may_see_with(struct campaign *campaign, int64_t person, int64_t segment,
                            const char *lease)
 {
-    struct campaign_lease_read read;
+    struct campaign_lease_read read = {0};
     if (lease != NULL && campaign_lease_open(campaign, lease, &read, NULL) &&
         read.person == person && read.segment == segment &&
         base_clock_unix_ms() < read.expires_ms + CAMPAIGN_LEASE_AFTER_MS)

@@ -8,7 +8,8 @@
 
 static bool no_memory(struct base_error *error)
 {
-    return base_fail(error, BASE_MEMORY, "There is no memory to load this light curve.");
+    (void)base_fail(error, BASE_MEMORY, "There is no memory to load this light curve.");
+    return false;
 }
 
 static void refuse(struct load_file *file, const struct base_error *why)
@@ -134,9 +135,10 @@ static bool flatten(struct load_curve *out, const struct load_recipe *recipe)
     out->trend = calloc(curve->count, sizeof *out->trend);
     if (curve->error != NULL)
         out->sigma = calloc(curve->count, sizeof *out->sigma);
-    bool ok = (trend != NULL && flat != NULL && out->flux != NULL && out->trend != NULL &&
-               (curve->error == NULL || out->sigma != NULL)) ||
-              no_memory(&out->error);
+    bool ok = trend != NULL && flat != NULL && out->flux != NULL && out->trend != NULL &&
+              (curve->error == NULL || out->sigma != NULL);
+    if (!ok)
+        (void)no_memory(&out->error);
     ok = ok && lightcurve_trend(curve->time, curve->flux, curve->count, recipe->trend_window_d,
                                 gap_d, trend, &out->error);
     for (size_t i = 0; ok && i < curve->count; i++) {

@@ -19,7 +19,8 @@
 
 static bool no_memory(struct base_error *error)
 {
-    return base_fail(error, BASE_MEMORY, "There is no memory for the consensus run.");
+    (void)base_fail(error, BASE_MEMORY, "There is no memory for the consensus run.");
+    return false;
 }
 
 static bool tell(const struct run_order *order, double fraction, const char *stage,

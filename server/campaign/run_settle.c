@@ -94,8 +94,9 @@ static bool decide(struct campaign *campaign, const struct run_result *result,
     const struct run_segment *segments = result->sum.segments.items;
     double dips = dips_a_segment(result);
     bool *doubts = list_doubts(result);
-    bool ok =
-        doubts != NULL || base_fail(error, BASE_MEMORY, "There is no memory to settle segments.");
+    bool ok = doubts != NULL;
+    if (!ok)
+        (void)base_fail(error, BASE_MEMORY, "There is no memory to settle segments.");
     for (size_t i = 0; ok && i < result->sum.segments.count; i++) {
         const struct run_segment *segment = &segments[i];
         bool done = (int64_t)segment->looks >= looks_least && !doubts[i] &&

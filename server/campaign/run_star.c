@@ -40,7 +40,8 @@ struct star {
 
 static bool no_memory(struct base_error *error)
 {
-    return base_fail(error, BASE_MEMORY, "There is no memory for a star of the consensus run.");
+    (void)base_fail(error, BASE_MEMORY, "There is no memory for a star of the consensus run.");
+    return false;
 }
 
 /* ---- reading ---- */

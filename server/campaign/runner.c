@@ -130,9 +130,9 @@ static void run_in_background(struct campaign *campaign)
     (void)snprintf(seconds, sizeof seconds, "%.3f", base_clock_monotonic_s() - began);
     if (ok)
         base_log_line(campaign->log, BASE_LOG_INFO, "run_done", "run", run, "seconds", seconds,
-                      NULL);
+                      (const char *)NULL);
     else if (error.kind != BASE_BUSY && error.kind != BASE_CANCELLED)
-        base_log_line(campaign->log, BASE_LOG_ERROR, "run_failed", "detail", error.sentence, NULL);
+        campaign_tell(campaign, BASE_LOG_ERROR, "run_failed", "detail", error.sentence);
 }
 
 /* Sessions and tokens that have ended are of no use to anybody. */
@@ -140,8 +140,7 @@ static void purge(struct campaign *campaign)
 {
     struct base_error error = {0};
     if (!store_access_purge(campaign->store, base_clock_unix_ms(), &error))
-        base_log_line(campaign->log, BASE_LOG_WARNING, "purge_failed", "detail", error.sentence,
-                      NULL);
+        campaign_tell(campaign, BASE_LOG_WARNING, "purge_failed", "detail", error.sentence);
 }
 
 /* Sleep until `seconds` from now, or until something changes. The lock is held. */

@@ -34,7 +34,7 @@ double campaign_setting_value(const struct campaign_settings *settings, unsigned
 struct campaign_settings campaign_settings_standard(void)
 {
     return (struct campaign_settings){
-#define X(name, kind, standard, least, most, unit, sentence) .name = standard,
+#define X(name, kind, standard, least, most, unit, sentence) .name = (standard),
         EBBMARK_SETTINGS(X)
 #undef X
     };
@@ -97,13 +97,13 @@ static bool fit_together(const struct campaign_settings *settings, const char *n
 static void take_stored(struct campaign *campaign, const struct store_setting *stored)
 {
     struct base_error error = {0};
-    double value;
+    double value = 0.0;
     unsigned index = index_of(stored->name);
     if (index < campaign_setting_count && read_value(index, stored->value, &value, &error))
         put(&campaign->settings, index, value);
     else
         base_log_line(campaign->log, BASE_LOG_WARNING, "setting_not_taken", "name", stored->name,
-                      "value", stored->value, NULL);
+                      "value", stored->value, (const char *)NULL);
 }
 
 bool settings_read(struct campaign *campaign, struct base_error *error)
@@ -119,8 +119,7 @@ bool settings_read(struct campaign *campaign, struct base_error *error)
         take_stored(campaign, &stored[i]);
     struct base_error unfit;
     if (ok && !fit_together(&campaign->settings, "", &unfit)) {
-        base_log_line(campaign->log, BASE_LOG_WARNING, "settings_do_not_fit", "detail",
-                      unfit.sentence, NULL);
+        campaign_tell(campaign, BASE_LOG_WARNING, "settings_do_not_fit", "detail", unfit.sentence);
         campaign->settings = campaign_settings_standard();
     }
     base_arena_free(arena);
@@ -141,7 +140,7 @@ bool campaign_setting_change(struct campaign *campaign, const char *name, const 
     unsigned index = index_of(name);
     if (index == campaign_setting_count)
         return base_fail_field(error, BASE_NOT_FOUND, name, "There is no setting %s.", name);
-    double number;
+    double number = 0.0;
     if (!read_value(index, value, &number, error))
         return false;
     char text[BASE_NUMBER_SIZE];

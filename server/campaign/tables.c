@@ -161,7 +161,7 @@ static const char *name_of(int64_t person, const char *handle, bool named,
 }
 
 #define CELL(name, type, field, value, unit, ucd, digits, sentence)                                \
-    out->cells[at++] = (struct export_cell){.field = value};
+    out->cells[at++] = (struct export_cell){.field = (value)};
 
 void campaign_candidate_cells(const struct store_candidate *row, struct campaign_cells *out)
 {

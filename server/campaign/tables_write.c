@@ -21,7 +21,8 @@ struct job {
 
 static bool no_memory(struct base_error *error)
 {
-    return base_fail(error, BASE_MEMORY, "There is no memory to write a table.");
+    (void)base_fail(error, BASE_MEMORY, "There is no memory to write a table.");
+    return false;
 }
 
 /* ---- who may be named ---- */

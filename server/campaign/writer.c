@@ -63,8 +63,7 @@ static uint64_t store_and_tell(struct campaign *campaign, const struct waiting *
         return taken;
     }
     if (!ok)
-        base_log_line(campaign->log, BASE_LOG_ERROR, "reviews_not_stored", "detail", error.sentence,
-                      NULL);
+        campaign_tell(campaign, BASE_LOG_ERROR, "reviews_not_stored", "detail", error.sentence);
     for (size_t i = 0; i < count; i++) {
         taken += ok && waiting[i].review->outcome == STORE_REVIEW_TAKEN ? 1 : 0;
         waiting[i].done(waiting[i].context, ok, ok ? NULL : &error);
