@@ -66,7 +66,8 @@ $(B)/%.o: %.c
 	$(CC) $(CPPFLAGS) $(CFLAGS_ALL) -MMD -MP -c $< -o $@
 
 # web/ and migrations/ are carried inside the program, so that it is one file.
-$(B)/generated/web_files.c: $(sort $(shell find web -type f ! -path '*/node_modules/*')) server/api/embed-web.sh
+$(B)/generated/web_files.c: $(sort $(shell find web -type f ! -path '*/node_modules/*')) \
+		server/api/embed-web.sh server/api/openapi.json
 	@mkdir -p $(@D)
 	server/api/embed-web.sh web $(B)/generated > $@.part && mv $@.part $@
 $(B)/generated/migrations.c: $(sort $(wildcard migrations/*.sql)) server/store/embed-migrations.sh

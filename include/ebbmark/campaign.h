@@ -68,7 +68,8 @@ bool campaign_join(struct campaign *campaign, const char *handle, const char *pa
 bool campaign_person_add(struct campaign *campaign, const char *handle, const char *passphrase,
                          enum store_role role, int64_t *id, struct base_error *error);
 /* BASE_DENIED with one and the same sentence for an unknown handle and a wrong passphrase, in the
- * same time. A suspended person with the right passphrase is told so. Slow. */
+ * same time. A suspended person with the right passphrase is told so, and only then is `out` filled
+ * in after a refusal. Slow. */
 bool campaign_sign_in(struct campaign *campaign, const char *handle, const char *passphrase,
                       struct base_arena *arena, struct store_person *out, struct base_error *error);
 /* Choose a (new) passphrase. Slow. */

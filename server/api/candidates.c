@@ -1,268 +1,248 @@
+/* The ranked list, and everything about one candidate. */
+#include "candidates.h"
+
+#include <inttypes.h>
 #include <math.h>
+#include <sodium.h>
+#include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
 
 #include "ebbmark/tables.h"
 #include "ebbmark/text.h"
-#include "inside.h"
+#include "routes.h"
+#include "verdicts.h"
 
-#define LIMIT_MAX 1000
-#define OFFSET_MAX 100000000
+/* ---- the question --------------------------------------------------------------------------- */
 
-static const struct {
-    const char *name;
-    enum store_candidate_order order;
-} orders[] = {{"probability", STORE_BY_PROBABILITY},
-              {"snr", STORE_BY_SNR},
-              {"depth", STORE_BY_DEPTH},
-              {"duration", STORE_BY_DURATION},
-              {"star", STORE_BY_STAR},
-              {"time", STORE_BY_TIME},
-              {"looks", STORE_BY_LOOKS},
-              {"marks", STORE_BY_MARKS}};
-
-static bool sort_read(struct http_exchange *exchange, struct store_candidate_query *query)
+/* ?run, or the current one. No run at all is no failure: run.id is 0 then. */
+static bool read_run(struct api_call *call, struct store_run *out)
 {
-    const char *text = http_query(exchange, "sort");
-    if (text == NULL)
-        text = "-probability";
-    query->ascending = text[0] != '-';
-    if (text[0] == '-')
-        text++;
-    for (size_t i = 0; i < sizeof orders / sizeof orders[0]; i++)
-        if (strcmp(orders[i].name, text) == 0) {
-            query->order = orders[i].order;
+    int64_t run = 0;
+    *out = (struct store_run){0};
+    call->answered = !http_query_integer(call->exchange, "run", 1, INT64_MAX, 0, &run);
+    return !call->answered && (run != 0 || store_run_current(call->store, &run, &call->error)) &&
+           (run == 0 || store_run_read(call->store, call->arena, run, out, &call->error));
+}
+
+static bool read_sort(struct api_call *call, struct store_candidate_query *query)
+{
+    static const char *const names[] = {[STORE_BY_PROBABILITY] = "probability",
+                                        [STORE_BY_SNR] = "snr",
+                                        [STORE_BY_DEPTH] = "depth",
+                                        [STORE_BY_DURATION] = "duration",
+                                        [STORE_BY_STAR] = "star",
+                                        [STORE_BY_TIME] = "time",
+                                        [STORE_BY_LOOKS] = "looks",
+                                        [STORE_BY_MARKS] = "marks"};
+    const char *sort = http_query(call->exchange, "sort");
+    if (sort == NULL)
+        sort = "-probability";
+    query->ascending = sort[0] != '-';
+    sort += query->ascending ? 0 : 1;
+    for (size_t i = 0; i < sizeof names / sizeof names[0]; i++)
+        if (strcmp(names[i], sort) == 0) {
+            query->order = (enum store_candidate_order)i;
             return true;
         }
-    (void)http_answer_problem(exchange, "invalid", "sort",
-                              "sort is probability, snr, depth, duration, star, time, looks or "
-                              "marks, with - before it for falling.");
-    return false;
+    return base_fail_field(&call->error, BASE_INVALID, "sort",
+                           "sort must be probability, snr, depth, duration, star, time, looks or "
+                           "marks; a minus before it puts the highest first.");
 }
 
-static const char *text_query(struct http_exchange *exchange, const char *name)
+static bool read_filters(struct api_call *call, struct store_candidate_query *query)
 {
-    const char *text = http_query(exchange, name);
-    return text != NULL ? text : "";
-}
-
-static bool query_read(struct http_exchange *exchange, struct store_candidate_query *query)
-{
-    int64_t limit;
-    *query = (struct store_candidate_query){.star = text_query(exchange, "star"),
-                                            .batch = text_query(exchange, "batch"),
-                                            .verdict = text_query(exchange, "verdict")};
-    static const char *const verdicts[] = {"", "none", "keep", "reject", "unsure"};
-    size_t i = 0;
-    while (i < 5 && strcmp(verdicts[i], query->verdict) != 0)
-        i++;
-    if (i == 5) {
-        (void)http_answer_problem(exchange, "invalid", "verdict",
-                                  "verdict is keep, reject, unsure or none.");
+    const char *star = http_query(call->exchange, "star");
+    const char *batch = http_query(call->exchange, "batch");
+    const char *verdict = http_query(call->exchange, "verdict");
+    query->star = star == NULL ? "" : star;
+    query->batch = batch == NULL ? "" : batch;
+    query->verdict = verdict == NULL ? "" : verdict;
+    call->answered =
+        !http_query_real(call->exchange, "min_probability", 0.0, 1.0, 0.0, &query->min_probability);
+    if (call->answered)
         return false;
-    }
-    if (!http_query_real(exchange, "min_probability", 0.0, 1.0, 0.0, &query->min_probability) ||
-        !http_query_integer(exchange, "run", 1, INT64_MAX, 0, &query->run) ||
-        !http_query_integer(exchange, "limit", 1, LIMIT_MAX, 100, &limit) ||
-        !cursor_read(exchange, &query->offset) || !sort_read(exchange, query))
-        return false;
-    if (query->offset > OFFSET_MAX) {
-        (void)http_answer_problem(exchange, "invalid", "cursor", "There is no such page.");
-        return false;
-    }
-    query->limit = (size_t)limit;
-    return true;
+    bool known = query->verdict[0] == '\0' || strcmp(query->verdict, "none") == 0;
+    for (size_t i = 0; !known && api_verdict_words[i] != NULL; i++)
+        known = strcmp(api_verdict_words[i], query->verdict) == 0;
+    return known || base_fail_field(&call->error, BASE_INVALID, "verdict",
+                                    "verdict must be keep, reject, unsure or none.");
 }
 
-static json_t *cell_json(const struct export_column *column, const struct export_cell *cell)
-{
-    if (cell->null)
-        return json_null();
-    switch (column->type) {
-    case EXPORT_INTEGER:
-        return json_integer(cell->integer);
-    case EXPORT_REAL:
-        return json_number(cell->real);
-    case EXPORT_BOOLEAN:
-        return json_boolean(cell->boolean);
-    default:
-        return cell->text == NULL ? json_null() : json_string(cell->text);
-    }
-}
+/* A page goes on in the run and the order that its list began with: the cursor holds the run, how
+ * many rows to pass over, and a digest of the question. */
+#define DIGEST_SIZE 8
 
-static json_t *candidate_json(const struct store_candidate *row)
+static bool digest_of(const struct store_candidate_query *query, char out[2 * DIGEST_SIZE + 1])
 {
-    const struct export_table *table = campaign_table(CAMPAIGN_CANDIDATES);
-    struct campaign_cells cells;
-    json_t *object = json_object();
-    campaign_candidate_cells(row, &cells);
-    for (size_t i = 0; i < table->column_count; i++)
-        (void)json_object_set_new(object, table->columns[i].name,
-                                  cell_json(&table->columns[i], &cells.cells[i]));
-    return object;
-}
-
-static json_t *run_json(struct store *store, struct base_arena *arena, int64_t number,
-                        struct base_error *error)
-{
-    struct store_run run;
-    if (number == 0)
-        return json_null();
-    return store_run_read(store, arena, number, &run, error)
-               ? json_pack("{s:I,s:o,s:I}", "run", (json_int_t)run.id, "finished",
-                           json_time(run.finished_ms), "reviews", (json_int_t)run.reviews)
-               : NULL;
-}
-
-static enum http_result list_json(struct http_exchange *exchange, struct api_server *api,
-                                  struct store_candidate_query *query)
-{
-    struct store *store = campaign_store(api->campaign);
-    struct store_candidate *rows;
-    size_t count;
-    int64_t total = 0;
-    struct base_error error = {0};
-    if ((query->run == 0 && !store_run_current(store, &query->run, &error)))
-        return http_answer_error(exchange, &error);
-    json_t *run = run_json(store, http_arena(exchange), query->run, &error);
-    if (run == NULL ||
-        !store_candidates_find(store, http_arena(exchange), query, &rows, &count, &total, &error)) {
-        json_decref(run);
-        return http_answer_error(exchange, &error);
-    }
-    json_t *list = json_array();
-    for (size_t i = 0; i < count; i++)
-        (void)json_array_append_new(list, candidate_json(&rows[i]));
-    int64_t reached = query->offset + (int64_t)count;
-    return answer_json(exchange, 200,
-                       json_pack("{s:o,s:I,s:o,s:o,s:s}", "run", run, "total", (json_int_t)total,
-                                 "candidates", list, "next", cursor_make(reached < total, reached),
-                                 "caution", CAMPAIGN_CAUTION));
-}
-
-static bool to_text(void *context, const void *data, size_t size, struct base_error *error)
-{
-    struct base_text *text = context;
-    base_text_add_bytes(text, data, size);
-    return !text->failed || base_fail(error, BASE_MEMORY, "There is no memory for the table.");
-}
-
-/* The filtered rows as a file, all of them. */
-static enum http_result list_file(struct http_exchange *exchange, struct api_server *api,
-                                  struct store_candidate_query *query, enum export_format format)
-{
-    static const struct export_fact facts[] = {{"caution", CAMPAIGN_CAUTION}};
-    struct store_candidate *rows;
-    size_t count;
-    struct base_error error = {0};
     struct base_text text = {0};
-    struct export_writer *writer = NULL;
-    query->limit = 0;
-    query->offset = 0;
-    bool ok = store_candidates_find(campaign_store(api->campaign), http_arena(exchange), query,
-                                    &rows, &count, NULL, &error) &&
-              export_open(&writer, format, campaign_table(CAMPAIGN_CANDIDATES), facts, 1, to_text,
-                          &text, &error);
-    for (size_t i = 0; ok && i < count; i++) {
-        struct campaign_cells cells;
-        campaign_candidate_cells(&rows[i], &cells);
-        ok = export_row(writer, cells.cells, &error);
-    }
-    ok = ok && export_finish(writer, &error);
-    export_close(writer);
-    if (ok)
-        http_answer_header(exchange, "Content-Disposition",
-                           format == EXPORT_CSV    ? "attachment; filename=\"candidates.csv\""
-                           : format == EXPORT_JSON ? "attachment; filename=\"candidates.json\""
-                                                   : "attachment; filename=\"candidates.vot\"");
-    enum http_result result =
-        ok ? http_answer_bytes(exchange, 200, export_media_type(format), text.data, text.length)
-           : http_answer_error(exchange, &error);
+    unsigned char digest[crypto_generichash_BYTES_MIN];
+    base_text_add_format(&text, "%d%c%a\n%s\n%s\n%s", (int)query->order,
+                         query->ascending ? '+' : '-', query->min_probability, query->star,
+                         query->batch, query->verdict);
+    bool ok =
+        !text.failed && crypto_generichash(digest, sizeof digest, (const unsigned char *)text.data,
+                                           text.length, NULL, 0) == 0;
     base_text_free(&text);
-    return result;
+    base_text_hex(out, digest, ok ? DIGEST_SIZE : 0);
+    return ok;
 }
 
-static enum http_result list(struct http_exchange *exchange, void *context)
+static bool read_cursor(struct api_call *call, struct candidates_question *question)
+{
+    const char *cursor = http_query(call->exchange, "cursor");
+    if (cursor == NULL)
+        return true;
+    char digest[2 * DIGEST_SIZE + 1], given[2 * DIGEST_SIZE + 1] = "", end;
+    int64_t run = 0, offset = 0;
+    int read = sscanf(cursor, "%" SCNd64 ".%" SCNd64 ".%16[0-9a-f]%c", &run, &offset, given, &end);
+    if (!digest_of(&question->query, digest))
+        return base_fail(&call->error, BASE_MEMORY, "There is no memory to read a cursor.");
+    if (read != 3 || run < 1 || offset < 1 || strcmp(given, digest) != 0)
+        return base_fail_field(&call->error, BASE_INVALID, "cursor",
+                               "This cursor is not one that this list gave for this question.");
+    question->query.offset = offset;
+    return question->run.id == run ||
+           store_run_read(call->store, call->arena, run, &question->run, &call->error);
+}
+
+static bool read_question(struct api_call *call, struct candidates_question *out)
+{
+    *out = (struct candidates_question){0};
+    bool ok = read_run(call, &out->run) && read_sort(call, &out->query) &&
+              read_filters(call, &out->query) && api_call_limit(call, &out->query.limit) &&
+              read_cursor(call, out);
+    out->query.run = out->run.id;
+    return ok;
+}
+
+/* ?format, or else what Accept likes best. */
+static bool read_format(struct api_call *call, enum export_format *out)
 {
     static const char *const types[] = {"application/json", "text/csv",
                                         "application/x-votable+xml"};
-    const char *format = http_query(exchange, "format");
-    struct store_candidate_query query;
-    enum export_format file = EXPORT_CSV;
-    if (!query_read(exchange, &query))
-        return HTTP_ANSWERED;
-    if (format == NULL) {
-        int type = http_accept_best(exchange, types, 3);
-        if (type < 0)
-            return http_answer_problem(exchange, "not_acceptable", NULL,
-                                       "Candidates come as JSON, CSV or VOTable.");
-        if (type == 0)
-            return list_json(exchange, context, &query);
-        file = type == 1 ? EXPORT_CSV : EXPORT_VOTABLE;
-    } else if (strcmp(format, "json") == 0) {
-        return list_json(exchange, context, &query);
-    } else if (!export_format_read(format, &file)) {
-        return http_answer_problem(exchange, "invalid", "format",
-                                   "format is json, csv or votable.");
+    static const enum export_format formats[] = {EXPORT_JSON, EXPORT_CSV, EXPORT_VOTABLE};
+    const char *format = http_query(call->exchange, "format");
+    if (format != NULL)
+        return export_format_read(format, out) ||
+               base_fail_field(&call->error, BASE_INVALID, "format",
+                               "format must be json, csv or votable.");
+    int best = http_accept_best(call->exchange, types, sizeof types / sizeof types[0]);
+    if (best >= 0) {
+        *out = formats[best];
+        return true;
     }
-    return list_file(exchange, context, &query, file);
+    (void)http_answer_problem(call->exchange, "not_acceptable", NULL,
+                              "Candidates can be had as JSON, CSV or VOTable.");
+    call->answered = true;
+    return false;
 }
 
-static json_t *marks_json(const struct store_candidate_mark *marks, size_t count)
+/* ---- the list ------------------------------------------------------------------------------- */
+
+static json_t *candidate_row(const void *item)
 {
-    json_t *list = json_array();
-    for (size_t i = 0; i < count; i++) {
-        json_t *mark = json_mark(&marks[i].mark);
-        (void)json_object_set_new(mark, "person", json_integer(marks[i].person));
-        (void)json_object_set_new(mark, "handle", json_text(marks[i].handle));
-        (void)json_object_set_new(mark, "weight", json_number(marks[i].weight));
-        (void)json_array_append_new(list, mark);
-    }
-    return list;
+    struct campaign_cells cells;
+    campaign_candidate_cells(item, &cells);
+    return api_cells(campaign_table(CAMPAIGN_CANDIDATES), cells.cells);
 }
 
-static json_t *verdicts_json(const struct store_verdict *verdicts, size_t count)
+static json_t *run_json(const struct store_run *run)
 {
-    json_t *list = json_array();
-    for (size_t i = 0; i < count; i++)
-        (void)json_array_append_new(list, json_pack("{s:s,s:s,s:o,s:I,s:o}", "verdict",
-                                                    verdicts[i].verdict, "note", verdicts[i].note,
-                                                    "handle", json_text(verdicts[i].handle),
-                                                    "person", (json_int_t)verdicts[i].person,
-                                                    "given", json_time(verdicts[i].given_ms)));
-    return list;
+    return run->id == 0
+               ? json_null()
+               : json_pack("{s:I, s:o, s:I}", "run", (json_int_t)run->id, "finished",
+                           api_moment(run->finished_ms), "reviews", (json_int_t)run->reviews);
 }
 
-static enum http_result one(struct http_exchange *exchange, void *context)
+static json_t *next_json(const struct candidates_question *question, size_t count, int64_t total)
 {
-    struct store *store = campaign_store(((struct api_server *)context)->campaign);
-    struct base_arena *arena = http_arena(exchange);
-    int64_t id, run;
-    struct store_candidate row;
-    struct store_candidate_mark *marks;
-    struct store_verdict *verdicts;
-    size_t mark_count, verdict_count;
-    struct base_error error = {0};
-    if (!path_number(exchange, "id", &id) ||
-        !http_query_integer(exchange, "run", 1, INT64_MAX, 0, &run))
-        return HTTP_ANSWERED;
-    if (!store_candidate_read(store, arena, run, id, &row, &error) ||
-        !store_candidate_marks(store, arena, row.run, id, &marks, &mark_count, &error) ||
-        !store_verdicts_list(store, arena, id, &verdicts, &verdict_count, &error))
-        return http_answer_error(exchange, &error);
-    json_t *answer = candidate_json(&row);
-    (void)json_object_set_new(answer, "marked_by", marks_json(marks, mark_count));
-    (void)json_object_set_new(answer, "verdicts", verdicts_json(verdicts, verdict_count));
-    (void)json_object_set_new(answer, "terms",
-                              json_pack("{s:o,s:o,s:o,s:o}", "looks", json_number(row.term_looks),
-                                        "time", json_number(row.term_time), "snr",
-                                        json_number(row.term_snr), "prior",
-                                        json_number(row.term_prior)));
-    (void)json_object_set_new(answer, "caution", json_string(CAMPAIGN_CAUTION));
-    return answer_json(exchange, 200, answer);
+    char digest[2 * DIGEST_SIZE + 1];
+    int64_t offset = question->query.offset + (int64_t)count;
+    if (count == 0 || offset >= total)
+        return json_null();
+    return digest_of(&question->query, digest)
+               ? json_sprintf("%" PRId64 ".%" PRId64 ".%s", question->run.id, offset, digest)
+               : NULL;
+}
+
+static enum http_result answer_page(struct api_call *call,
+                                    const struct candidates_question *question)
+{
+    struct store_candidate *found = NULL;
+    size_t count = 0;
+    int64_t total = 0;
+    if (question->run.id != 0 && !store_candidates_find(call->store, call->arena, &question->query,
+                                                        &found, &count, &total, &call->error))
+        return api_call_end(call);
+    http_answer_header(call->exchange, "Vary", "Accept");
+    return http_answer_json(call->exchange, 200,
+                            json_pack("{s:o, s:I, s:o, s:o, s:s}", "run", run_json(&question->run),
+                                      "total", (json_int_t)total, "candidates",
+                                      api_list(found, count, sizeof *found, candidate_row), "next",
+                                      next_json(question, count, total), "caution",
+                                      CAMPAIGN_CAUTION));
+}
+
+/* GET /candidates */
+static enum http_result list(struct http_exchange *exchange, void *context)
+{
+    struct api_call call;
+    struct candidates_question question;
+    enum export_format format;
+    bool ok = api_call_begin(&call, exchange, context) && read_format(&call, &format) &&
+              read_question(&call, &question);
+    if (!ok)
+        return api_call_end(&call);
+    return format == EXPORT_JSON ? answer_page(&call, &question)
+                                 : candidates_answer_table(&call, &question, format);
+}
+
+/* ---- one ------------------------------------------------------------------------------------ */
+
+static json_t *mark_json(const void *item)
+{
+    const struct store_candidate_mark *mark = item;
+    return api_joined(json_pack("{s:I, s:o, s:o}", "person", (json_int_t)mark->person, "handle",
+                                api_text_or_null(mark->handle), "weight", api_number(mark->weight)),
+                      api_mark(&mark->mark));
+}
+
+static json_t *terms_json(const struct store_candidate *candidate)
+{
+    return json_pack("{s:o, s:o, s:o, s:o}", "looks", api_number(candidate->term_looks), "time",
+                     api_number(candidate->term_time), "snr", api_number(candidate->term_snr),
+                     "prior", api_number(candidate->term_prior));
+}
+
+/* GET /candidates/{id} */
+static enum http_result show(struct http_exchange *exchange, void *context)
+{
+    struct api_call call;
+    struct store_run run;
+    struct store_candidate candidate;
+    struct store_candidate_mark *marks = NULL;
+    struct store_verdict *verdicts = NULL;
+    size_t mark_count = 0, verdict_count = 0;
+    int64_t id;
+    bool ok =
+        api_call_begin(&call, exchange, context) &&
+        api_call_number(&call, "id", "There is no such candidate.", &id) && read_run(&call, &run) &&
+        store_candidate_read(call.store, call.arena, run.id, id, &candidate, &call.error) &&
+        store_candidate_marks(call.store, call.arena, run.id, id, &marks, &mark_count,
+                              &call.error) &&
+        store_verdicts_list(call.store, call.arena, id, &verdicts, &verdict_count, &call.error);
+    if (!ok)
+        return api_call_end(&call);
+    json_t *more = json_pack("{s:o, s:o, s:o, s:s}", "marked_by",
+                             api_list(marks, mark_count, sizeof *marks, mark_json), "terms",
+                             terms_json(&candidate), "verdicts",
+                             api_list(verdicts, verdict_count, sizeof *verdicts, api_verdict),
+                             "caution", CAMPAIGN_CAUTION);
+    return http_answer_json(exchange, 200, api_joined(candidate_row(&candidate), more));
 }
 
 const struct http_route api_candidates_routes[] = {
     {"GET", "/api/v1/candidates", HTTP_SCIENCE, HTTP_SLOW, 0, list},
-    {"GET", "/api/v1/candidates/{id}", HTTP_SCIENCE, HTTP_SLOW, 0, one},
+    {"GET", "/api/v1/candidates/{id}", HTTP_SCIENCE, HTTP_SLOW, 0, show},
     {NULL, NULL, HTTP_ANYONE, 0, 0, NULL}};

@@ -1,58 +1,72 @@
 #!/bin/sh
-# embed-web.sh WEB OUT: a C source on standard output that carries every file of WEB and the interface's
-# description, plain and compressed, each with an ETag from its content.
+# embed-web.sh WEB OUT: a C source on standard output that carries every file of WEB and openapi.json, plain
+# and compressed, each with an ETag from its content. The compressed forms are kept under OUT.
 set -eu
-web=$1
-out=$2
-mkdir -p "$out/gzip"
-
-# One array of bytes from the assembler's own reader: NAME FILE.
-bytes() {
-    printf '__asm__(".section .rodata\\n.global %s\\n.balign 16\\n%s:\\n.incbin \\"%s\\"\\n.byte 0\\n.previous\\n");\n' \
-        "$1" "$1" "$(realpath "$2")"
-    printf 'extern const unsigned char %s[];\n' "$1"
-}
+web=$(realpath "$1")
+mkdir -p "$2/gzip"
+packed=$(realpath "$2/gzip")
+description=$(realpath "$(dirname "$0")/openapi.json")
 
 media_type() {
     case $1 in
     *.html) echo 'text/html; charset=utf-8' ;;
-    *.js | *.mjs) echo 'text/javascript; charset=utf-8' ;;
+    *.js) echo 'text/javascript; charset=utf-8' ;;
     *.css) echo 'text/css; charset=utf-8' ;;
     *.svg) echo 'image/svg+xml' ;;
+    *.png) echo 'image/png' ;;
     *.json) echo 'application/json' ;;
     *.txt) echo 'text/plain; charset=utf-8' ;;
-    *) echo 'application/octet-stream' ;;
+    *.webmanifest) echo 'application/manifest+json' ;;
+    *.woff2) echo 'font/woff2' ;;
+    *)
+        echo "$1: embed-web.sh knows no media type for this file." >&2
+        exit 1
+        ;;
     esac
 }
 
-echo '#include "ebbmark/http.h"'
-echo 'extern const struct http_static_file web_files[];'
-echo 'extern const size_t web_file_count;'
-number=0
-rows=
-newline='
-'
-for file in $(find "$web" -type f ! -name '.*' | LC_ALL=C sort); do
-    number=$((number + 1))
-    packed="$out/gzip/$number.gz"
-    gzip -9nc "$file" >"$packed"
-    size=$(wc -c <"$file")
-    small=$(wc -c <"$packed")
-    etag=$(sha256sum "$file" | cut -c 1-32)
-    bytes "web_plain_$number" "$file"
-    gzip_name=NULL
-    gzip_size=0
+# Bytes read by the assembler: NAME FILE.
+bytes() {
+    printf '__asm__(".section .rodata\\n.global %s\\n.balign 16\\n%s:\\n.incbin \\"%s\\"\\n.previous\\n");\n' \
+        "$1" "$1" "$2"
+    printf 'extern const unsigned char %s[];\n' "$1"
+}
+
+# The bytes of one file, and at the end of file $rows its row: NAME FILE PATH.
+embed() {
+    gzip -9nc "$2" >"$packed/$1.gz"
+    size=$(wc -c <"$2")
+    small=$(wc -c <"$packed/$1.gz")
+    bytes "embedded_$1" "$2"
+    gzip=NULL
     if [ "$small" -lt "$size" ]; then
-        bytes "web_gzip_$number" "$packed"
-        gzip_name=web_gzip_$number
-        gzip_size=$small
+        bytes "embedded_$1_gzip" "$packed/$1.gz"
+        gzip="embedded_$1_gzip"
+    else
+        small=0
     fi
-    rows="$rows    {\"${file#"$web"}\", \"$(media_type "$file")\", web_plain_$number, $size, $gzip_name, $gzip_size, \"\\\"$etag\\\"\"},$newline"
-done
-printf 'const struct http_static_file web_files[] = {\n%s    {NULL, NULL, NULL, 0, NULL, 0, NULL}};\n' "$rows"
+    type=$(media_type "$3")
+    etag=$(sha256sum <"$2" | cut -c 1-32)
+    printf '    {"%s", "%s", embedded_%s, %d, %s, %d, "\\"%s\\""},\n' \
+        "$3" "$type" "$1" "$size" "$gzip" "$small" "$etag" >>"$rows"
+}
+
+rows=$packed/rows
+: >"$rows"
+echo '#include "server/api/embedded.h"'
+number=0
+# What serves those who work on the pages is not for those who look at them.
+find "$web" -name node_modules -prune -o -type f ! -name '.*' ! -name '*.md' ! -name '*.d.ts' \
+    ! -name 'package*.json' ! -name '*sconfig.json' -print | LC_ALL=C sort >"$packed/files"
+while IFS= read -r file; do
+    number=$((number + 1))
+    embed "$number" "$file" "${file#"$web"}"
+done <"$packed/files"
+echo 'const struct http_static_file web_files[] = {'
+cat "$rows"
+echo '    {NULL, NULL, NULL, 0, NULL, 0, NULL}};'
 echo "const size_t web_file_count = $number;"
-description=$(dirname "$0")/openapi.json
-printf '__asm__(".section .rodata\\n.global openapi_text\\nopenapi_text:\\n.incbin \\"%s\\"\\n.byte 0\\n.previous\\n");\n' \
-    "$(realpath "$description")"
-echo 'extern const size_t openapi_size;'
-echo "const size_t openapi_size = $(wc -c <"$description");"
+: >"$rows"
+embed description "$description" /api/v1/openapi.json
+echo 'const struct http_static_file api_description ='
+sed -e 's/,$/;/' "$rows"

@@ -1,9 +1,12 @@
-#include "inside.h"
+/* The description of this interface. */
+#include "call.h"
+#include "routes.h"
 
+/* GET /openapi.json */
 static enum http_result show(struct http_exchange *exchange, void *context)
 {
-    (void)context;
-    return http_answer_bytes(exchange, 200, "application/json", openapi_text, openapi_size);
+    const struct api *api = context;
+    return http_answer_kept(exchange, api->description);
 }
 
 const struct http_route api_openapi_routes[] = {

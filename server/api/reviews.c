@@ -1,233 +1,211 @@
-/* Taking a review: read, check, hand to the writer; the answer goes out after the commit. */
+/*
+ * Taking a review: the hot path. It is read and checked here, handed to the campaign's writer, and
+ * answered only when the writer says that it is on the disk.
+ */
 #include <math.h>
 #include <sodium.h>
 #include <stdio.h>
 #include <string.h>
 
+#include "call.h"
 #include "ebbmark/clock.h"
-#include "inside.h"
+#include "routes.h"
 
-#define BODY_MAX 32768
-#define MARKS_READ_MAX 1000 /* more than this is not even read; the campaign's own limit is lower  \
-                             */
-#define KEY_MAX 200
-#define SECONDS_MAX 86400.0
+#define BODY_MOST 65536
+#define KEY_MOST 200
+#define MARKS_MOST 50 /* the most that the setting marks_most allows */
+#define SECONDS_MOST 86400.0
 
-/* One review under way; lives in the exchange's arena until it is answered. */
-struct taking {
+/* A review on its way; from the exchange's arena, so that it lives until the answer is sent. */
+struct sending {
     struct http_exchange *exchange;
     struct store_review_new review;
+    struct store_mark marks[MARKS_MOST];
 };
 
-static bool invalid(struct http_exchange *exchange, const char *field, const char *why)
-{
-    (void)http_answer_problem(exchange, "invalid", field, "%s %s.", field, why);
-    return false;
-}
+/* ---- reading -------------------------------------------------------------------------------- */
 
-/* 1 to KEY_MAX visible ASCII characters. */
-static const char *key_read(struct http_exchange *exchange)
+static bool read_key(struct api_call *call, const char **out)
 {
-    const char *key = http_header(exchange, "Idempotency-Key");
-    size_t length = key != NULL ? strlen(key) : 0;
-    bool fits = length >= 1 && length <= KEY_MAX;
-    for (size_t i = 0; fits && i < length; i++)
-        fits = key[i] > 0x20 && key[i] < 0x7f;
-    if (fits)
-        return key;
-    (void)http_answer_problem(
-        exchange, "bad_request", NULL,
-        "Send an Idempotency-Key of 1 to %d visible ASCII characters, the same "
-        "one when you send the same review again.",
-        KEY_MAX);
-    return NULL;
-}
-
-static bool number_member(struct http_exchange *exchange, const json_t *mark, size_t i,
-                          const char *name, double *out)
-{
-    char field[64];
-    const json_t *value = json_object_get(mark, name);
-    *out = json_number_value(value);
-    if (json_is_number(value) && isfinite(*out))
-        return true;
-    (void)snprintf(field, sizeof field, "marks[%zu].%s", i, name);
-    return invalid(exchange, field, "must be a finite number");
-}
-
-static bool mark_read(struct http_exchange *exchange, const json_t *json, size_t i,
-                      struct store_mark *out)
-{
-    static const char *const known[] = {"starts", "ends", "low", "high", "certainty", NULL};
-    char where[48];
-    (void)snprintf(where, sizeof where, "marks[%zu]", i);
-    if (!json_is_object(json))
-        return invalid(exchange, where, "must be an object");
-    (void)snprintf(where, sizeof where, "marks[%zu].", i);
-    if (!members_known(exchange, json, where, known) ||
-        !number_member(exchange, json, i, "starts", &out->starts_d) ||
-        !number_member(exchange, json, i, "ends", &out->ends_d) ||
-        !number_member(exchange, json, i, "low", &out->low) ||
-        !number_member(exchange, json, i, "high", &out->high))
-        return false;
-    const json_t *certainty = json_object_get(json, "certainty");
-    const char *word = certainty == NULL ? "sure" : json_string_value(certainty);
-    if (word == NULL || (strcmp(word, "sure") != 0 && strcmp(word, "unsure") != 0)) {
-        (void)snprintf(where, sizeof where, "marks[%zu].certainty", i);
-        return invalid(exchange, where, "is \"sure\" or \"unsure\"");
-    }
-    out->sure = strcmp(word, "sure") == 0;
-    return true;
-}
-
-static bool marks_read(struct http_exchange *exchange, const json_t *body,
-                       struct store_review_new *review, struct store_mark **marks)
-{
-    const json_t *list = json_object_get(body, "marks");
-    if (!json_is_array(list) || json_array_size(list) > MARKS_READ_MAX)
-        return invalid(exchange, "marks", "must be a list, empty when there is no dip");
-    size_t count = json_array_size(list);
-    *marks = base_arena_take_array(http_arena(exchange), count + 1, sizeof **marks);
-    if (*marks == NULL) {
-        (void)http_answer_problem(exchange, "internal", NULL, "There is no memory for the marks.");
-        return false;
-    }
-    for (size_t i = 0; i < count; i++)
-        if (!mark_read(exchange, json_array_get(list, i), i, &(*marks)[i]))
-            return false;
-    review->marks = *marks;
-    review->mark_count = count;
-    return true;
-}
-
-static bool conditions_read(struct http_exchange *exchange, const json_t *body, unsigned *out)
-{
-    const json_t *list = json_object_get(body, "conditions");
-    *out = 0;
-    if (list == NULL)
-        return true;
-    if (!json_is_array(list))
-        return invalid(exchange, "conditions", "must be a list");
-    for (size_t i = 0; i < json_array_size(list); i++) {
-        const char *word = json_string_value(json_array_get(list, i));
-        if (word != NULL && strcmp(word, "break") == 0)
-            *out |= STORE_BREAK;
-        else if (word != NULL && strcmp(word, "keeps_changing") == 0)
-            *out |= STORE_KEEPS_CHANGING;
-        else
-            return invalid(exchange, "conditions", "knows \"break\" and \"keeps_changing\"");
-    }
-    return true;
-}
-
-/* Open the lease: whose, for which segment, and is it still running? */
-static bool lease_read(struct http_exchange *exchange, struct api_server *api, const json_t *body,
-                       struct store_review_new *review)
-{
-    struct campaign_lease_read lease;
-    struct base_error error = {0};
-    const char *text = json_string_value(json_object_get(body, "lease"));
-    if (text == NULL)
-        return invalid(exchange, "lease", "is missing");
-    if (!campaign_lease_open(api->campaign, text, &lease, &error)) {
-        (void)http_answer_error(exchange, &error);
-        return false;
-    }
-    if (lease.person != review->person) {
-        (void)http_answer_problem(exchange, "not_your_lease", NULL,
-                                  "This lease was given to somebody else.");
-        return false;
-    }
-    review->segment = lease.segment;
-    review->late = lease.expired;
-    memcpy(review->lease, lease.nonce, sizeof review->lease);
-    return true;
-}
-
-static bool seconds_read(struct http_exchange *exchange, const json_t *body, double *out)
-{
-    const json_t *value = json_object_get(body, "seconds");
-    *out = value == NULL ? 0.0 : json_number_value(value);
-    return value == NULL || (json_is_number(value) && *out >= 0.0 && *out <= SECONDS_MAX) ||
-           invalid(exchange, "seconds", "must be a number from 0 to 86400");
-}
-
-static void answer_taken(struct http_exchange *exchange, const struct store_review_new *review)
-{
-    if (review->outcome == STORE_REVIEW_REPEATED)
-        http_answer_header(exchange, "Ebbmark-Repeated", "1");
-    (void)answer_json(
-        exchange, 201,
-        json_pack("{s:I,s:b}", "review", (json_int_t)review->review, "late", review->was_late));
-}
-
-/* On the writer's thread, after the commit (or its failure). */
-static void done(void *context, bool ok, const struct base_error *error)
-{
-    struct taking *taking = context;
-    struct http_exchange *exchange = taking->exchange;
+    const char *key = http_header(call->exchange, "Idempotency-Key");
+    size_t length = key == NULL ? 0 : strlen(key);
+    bool ok = length >= 1 && length <= KEY_MOST;
+    for (size_t i = 0; ok && i < length; i++)
+        ok = key[i] > ' ' && key[i] < 0x7f;
     if (!ok) {
-        (void)http_answer_error(exchange, error);
-        http_resume(exchange);
+        (void)http_answer_problem(
+            call->exchange, "bad_request", "Idempotency-Key",
+            "A review needs the header Idempotency-Key: 1 to %d visible ASCII "
+            "characters, the same each time this review is sent.",
+            KEY_MOST);
+        call->answered = true;
+    }
+    *out = key;
+    return ok;
+}
+
+static void read_mark(struct api_call *call, json_t *json, size_t index, struct store_mark *out)
+{
+    static const char *const names[] = {"starts", "ends", "low", "high", "certainty", NULL};
+    static const char *const certainties[] = {"sure", "unsure", NULL};
+    char prefix[32];
+    const struct api_input marks = {call, json, ""};
+    if (!json_is_object(json)) {
+        (void)snprintf(prefix, sizeof prefix, "marks[%zu]", index);
+        api_input_fault(&marks, prefix, "%s must be an object.", prefix);
         return;
     }
-    switch (taking->review.outcome) {
-    case STORE_REVIEW_TAKEN:
+    (void)snprintf(prefix, sizeof prefix, "marks[%zu].", index);
+    const struct api_input input = {call, json, prefix};
+    size_t certainty = 0;
+    api_input_only(&input, names);
+    (void)api_input_number(&input, "starts", true, -INFINITY, INFINITY, &out->starts_d);
+    (void)api_input_number(&input, "ends", true, -INFINITY, INFINITY, &out->ends_d);
+    (void)api_input_number(&input, "low", true, -INFINITY, INFINITY, &out->low);
+    (void)api_input_number(&input, "high", true, -INFINITY, INFINITY, &out->high);
+    (void)api_input_word(&input, "certainty", false, certainties, &certainty);
+    out->sure = certainty == 0;
+}
+
+static void read_marks(const struct api_input *input, struct sending *sending)
+{
+    json_t *marks = NULL;
+    if (!api_input_array(input, "marks", true, &marks))
+        return;
+    size_t count = json_array_size(marks);
+    if (count > MARKS_MOST) {
+        api_input_fault(input, "marks", "A review holds at most %d marks, this one has %zu.",
+                        MARKS_MOST, count);
+        return;
+    }
+    for (size_t i = 0; i < count; i++)
+        read_mark(input->call, json_array_get(marks, i), i, &sending->marks[i]);
+    sending->review.marks = sending->marks;
+    sending->review.mark_count = count;
+}
+
+static void read_conditions(const struct api_input *input, struct sending *sending)
+{
+    json_t *conditions = NULL, *condition;
+    size_t i;
+    if (!api_input_array(input, "conditions", false, &conditions))
+        return;
+    json_array_foreach(conditions, i, condition)
+    {
+        const char *word = json_string_value(condition);
+        char name[40];
+        (void)snprintf(name, sizeof name, "conditions[%zu]", i);
+        if (word != NULL && strcmp(word, "break") == 0)
+            sending->review.conditions |= STORE_BREAK;
+        else if (word != NULL && strcmp(word, "keeps_changing") == 0)
+            sending->review.conditions |= STORE_KEEPS_CHANGING;
+        else
+            api_input_fault(input, name, "%s must be break or keeps_changing.", name);
+    }
+}
+
+static bool read_review(struct api_call *call, struct sending *sending, const char **lease)
+{
+    static const char *const names[] = {"lease", "marks", "conditions", "seconds", NULL};
+    struct api_input input = {call, NULL, ""};
+    size_t size;
+    if (!read_key(call, &sending->review.key) || !api_call_body(call, false, &input.object))
+        return false;
+    api_input_only(&input, names);
+    (void)api_input_text(&input, "lease", true, CAMPAIGN_LEASE_SIZE - 1, lease);
+    (void)api_input_number(&input, "seconds", false, 0.0, SECONDS_MOST, &sending->review.seconds);
+    read_marks(&input, sending);
+    read_conditions(&input, sending);
+    const void *body = http_body(call->exchange, &size);
+    (void)crypto_hash_sha256(sending->review.body_hash, body, size);
+    return api_input_end(call);
+}
+
+/* ---- checking ------------------------------------------------------------------------------- */
+
+static bool check(struct api_call *call, struct sending *sending, const char *text)
+{
+    struct store_review_new *review = &sending->review;
+    struct campaign_lease_read lease;
+    struct store_segment segment;
+    if (!campaign_lease_open(call->campaign, text, &lease, &call->error))
+        return false;
+    if (lease.person != call->person) {
+        (void)http_answer_problem(call->exchange, "not_your_lease", "lease",
+                                  "This lease was given to somebody else.");
+        call->answered = true;
+        return false;
+    }
+    review->person = lease.person;
+    review->segment = lease.segment;
+    review->late = lease.expired;
+    review->submitted_ms = base_clock_unix_ms();
+    memcpy(review->lease, lease.nonce, sizeof review->lease);
+    return store_segment_by_id(call->store, call->arena, lease.segment, &segment, &call->error) &&
+           campaign_review_check(call->campaign, &segment, sending->marks, review->mark_count,
+                                 &call->error);
+}
+
+/* ---- answering ------------------------------------------------------------------------------ */
+
+static enum http_result answer(struct http_exchange *exchange,
+                               const struct store_review_new *review)
+{
+    switch (review->outcome) {
     case STORE_REVIEW_REPEATED:
-        answer_taken(exchange, &taking->review);
+        http_answer_header(exchange, "Ebbmark-Repeated", "1");
+        break;
+    case STORE_REVIEW_TAKEN:
         break;
     case STORE_REVIEW_KEY_REUSED:
-        (void)http_answer_problem(exchange, "invalid", NULL,
-                                  "This Idempotency-Key was used for another review.");
-        break;
+        return http_answer_problem(exchange, "invalid", "Idempotency-Key",
+                                   "This Idempotency-Key was used for another review; nothing was "
+                                   "stored. Choose a new one for each review.");
     case STORE_REVIEW_LEASE_USED:
-        (void)http_answer_problem(exchange, "lease_used", NULL,
-                                  "This lease has its review already.");
-        break;
+        return http_answer_problem(exchange, "lease_used", "lease",
+                                   "This lease was answered already, by a review that is kept.");
     case STORE_REVIEW_CLOSED:
-        (void)http_answer_problem(exchange, "expired_lease", NULL,
-                                  "The lease has ended and the segment needs no more looks.");
-        break;
+        return http_answer_problem(exchange, "expired_lease", "lease",
+                                   "The lease is over and the segment needs no more looks; this "
+                                   "review was not stored.");
     }
+    return http_answer_json(
+        exchange, 201,
+        json_pack("{s:I, s:b}", "review", (json_int_t)review->review, "late", review->was_late));
+}
+
+/* On the writer's thread, after the commit. Nothing of the server's own is touched here but the
+ * exchange, because the server may be gone by now. */
+static void stored(void *context, bool ok, const struct base_error *error)
+{
+    struct sending *sending = context;
+    struct http_exchange *exchange = sending->exchange;
+    if (ok)
+        (void)answer(exchange, &sending->review);
+    else
+        (void)http_answer_error(exchange, error);
     http_resume(exchange);
 }
 
-static enum http_result take(struct http_exchange *exchange, void *context)
+/* POST /reviews */
+static enum http_result send(struct http_exchange *exchange, void *context)
 {
-    static const char *const known[] = {"lease", "marks", "conditions", "seconds", NULL};
-    struct api_server *api = context;
-    json_t *body;
-    size_t size;
-    struct store_mark *marks;
-    struct store_segment segment;
-    struct base_error error = {0};
-    struct taking *taking = base_arena_take(http_arena(exchange), sizeof *taking);
-    const char *key = key_read(exchange);
-    if (key == NULL || !http_body_json(exchange, &body))
-        return HTTP_ANSWERED;
-    if (taking == NULL)
-        return http_answer_problem(exchange, "internal", NULL,
-                                   "There is no memory for the review.");
-    taking->exchange = exchange;
-    struct store_review_new *review = &taking->review;
-    *review = (struct store_review_new){.person = http_identity(exchange)->person,
-                                        .key = key,
-                                        .submitted_ms = base_clock_unix_ms()};
-    if (!members_known(exchange, body, "", known) || !lease_read(exchange, api, body, review) ||
-        !marks_read(exchange, body, review, &marks) ||
-        !conditions_read(exchange, body, &review->conditions) ||
-        !seconds_read(exchange, body, &review->seconds))
-        return HTTP_ANSWERED;
-    const void *sent = http_body(exchange, &size);
-    (void)crypto_hash_sha256(review->body_hash, sent, size);
-    if (!store_segment_by_id(campaign_store(api->campaign), http_arena(exchange), review->segment,
-                             &segment, &error) ||
-        !campaign_review_check(api->campaign, &segment, marks, review->mark_count, &error) ||
-        !campaign_review_submit(api->campaign, review, done, taking, &error))
-        return http_answer_error(exchange, &error);
-    return HTTP_LATER;
+    struct api_call call;
+    const char *lease = NULL;
+    if (!api_call_begin(&call, exchange, context))
+        return api_call_end(&call);
+    struct sending *sending = base_arena_take(call.arena, sizeof *sending);
+    bool ok = sending != NULL
+                  ? read_review(&call, sending, &lease) && check(&call, sending, lease)
+                  : base_fail(&call.error, BASE_MEMORY, "There is no memory to take a review.");
+    if (!ok)
+        return api_call_end(&call);
+    sending->exchange = exchange;
+    return campaign_review_submit(call.campaign, &sending->review, stored, sending, &call.error)
+               ? HTTP_LATER
+               : api_call_end(&call);
 }
 
 const struct http_route api_reviews_routes[] = {
-    {"POST", "/api/v1/reviews", HTTP_REVIEWER, 0, BODY_MAX, take},
+    {"POST", "/api/v1/reviews", HTTP_REVIEWER, 0, BODY_MOST, send},
     {NULL, NULL, HTTP_ANYONE, 0, 0, NULL}};

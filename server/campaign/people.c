@@ -179,8 +179,10 @@ bool campaign_sign_in(struct campaign *campaign, const char *handle, const char 
     if (!find_person(campaign, handle, arena, out, error) ||
         !passphrase_verify(&campaign->passphrases, out->passphrase, passphrase, &right, error))
         return false;
-    if (!right)
+    if (!right) {
+        *out = (struct store_person){0};
         return base_fail(error, BASE_DENIED, "Handle and passphrase do not go together.");
+    }
     if (out->suspended)
         return base_fail(error, BASE_DENIED,
                          "This person is suspended; the campaign's admins can say why.");
