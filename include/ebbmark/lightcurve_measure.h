@@ -75,7 +75,7 @@ struct lightcurve_dip {
  * a bump unless the interval itself stands high. Single points far above their neighbours, and
  * outliers well away from the interval, are left out; low points near it never are. The errors of
  * a box's duration and depth hold what an ingress that cannot be seen leaves open. Data of more
- * than 4,000 points are averaged down to about so many, so that the cost is bounded: about 2 ms.
+ * than 4,000 points are averaged down to about so many, so that the cost is bounded: about 1 ms.
  * Returns false only on BASE_MEMORY. */
 bool lightcurve_dip_measure(const double *time, const double *flux, const double *error, size_t n,
                             double gap_d, double starts_d, double ends_d,

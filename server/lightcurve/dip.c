@@ -4,223 +4,15 @@
 #include "dip.h"
 
 #include <math.h>
-#include <stdlib.h>
 
-#include "ebbmark/lightcurve_measure.h"
 #include "robust.h"
 
-#define BESIDE_LENGTHS 1.5      /* data taken either side, in interval lengths … */
-#define BESIDE_LEAST_D 0.3      /* … but at least this */
-#define INSIDE_LEAST 3          /* points in the interval */
-#define POINTS_LEAST 10         /* points in all */
-#define POINTS_FITTED_MOST 4000 /* more are averaged down to about so many */
-#define AWAY_LENGTHS 1.25       /* so many lengths off, a point cannot be part of the dip */
-#define OUTLIER_SIGMAS 6.0
-#define OUTLIERS_MOST 0.4      /* more than this share beside the dip are no outliers */
-#define SIDE_POINTS_LEAST 3    /* on both sides, for a slope … */
-#define SIDE_LENGTH_LEAST 0.25 /* … over this share of the interval */
-#define MID_REACH 0.25         /* the middle may lie outside the interval by so many lengths */
-#define LENGTH_SHORTEST 0.2    /* box lengths tried, in interval lengths */
+#define MID_REACH 0.25      /* the middle may lie outside the interval by so many lengths */
+#define LENGTH_SHORTEST 0.2 /* box lengths tried, in interval lengths */
 #define LENGTH_LONGEST 3.0
 #define TRAPEZOID_GAIN 2.0 /* chi2 that one parameter more must be worth (Akaike 1974) */
 
-/* What was asked for. */
-struct task {
-    const double *time, *flux, *error;
-    size_t n;
-    double gap_d, starts_d, ends_d;
-    const struct lightcurve_noise *noise;
-    double cadence_d;
-    size_t first, end; /* points taken: [first, end) */
-};
-
-static size_t first_not_before(const double *time, size_t n, double at)
-{
-    size_t low = 0, high = n;
-    while (low < high) {
-        size_t middle = low + (high - low) / 2;
-        if (time[middle] < at)
-            low = middle + 1;
-        else
-            high = middle;
-    }
-    return low;
-}
-
-/* Choose the points: the interval and its surroundings as far as the nearest gap. False when they
- * are too few. */
-static bool choose_points(struct task *task)
-{
-    double length = task->ends_d - task->starts_d;
-    if (!(length > 0.0) || !isfinite(length))
-        return false;
-    double beside = fmax(BESIDE_LENGTHS * length, BESIDE_LEAST_D);
-    size_t inside = first_not_before(task->time, task->n, task->starts_d);
-    size_t after = first_not_before(task->time, task->n, nextafter(task->ends_d, INFINITY));
-    if (after < inside + INSIDE_LEAST)
-        return false;
-    size_t least = first_not_before(task->time, task->n, task->starts_d - beside);
-    size_t most = first_not_before(task->time, task->n, task->ends_d + beside);
-    task->first = inside;
-    while (task->first > least &&
-           task->time[task->first] - task->time[task->first - 1] <= task->gap_d)
-        task->first--;
-    task->end = after;
-    while (task->end < most && task->time[task->end] - task->time[task->end - 1] <= task->gap_d)
-        task->end++;
-    return task->end - task->first >= POINTS_LEAST;
-}
-
-/* The usual step and the point noise, from the points themselves where nobody said. */
-static double usual_step(const struct task *task, double *scratch)
-{
-    if (task->noise->cadence_d > 0.0 && isfinite(task->noise->cadence_d))
-        return task->noise->cadence_d;
-    size_t count = task->end - task->first - 1;
-    for (size_t i = 0; i < count; i++)
-        scratch[i] = task->time[task->first + i + 1] - task->time[task->first + i];
-    return lightcurve_median(scratch, count);
-}
-
-static double usual_noise(const struct task *task, double *scratch, double *more)
-{
-    if (task->noise->point > 0.0 && isfinite(task->noise->point))
-        return task->noise->point;
-    size_t count = task->end - task->first - 1;
-    for (size_t i = 0; i < count; i++)
-        scratch[i] = task->flux[task->first + i + 1] - task->flux[task->first + i];
-    double middle = lightcurve_median(scratch, count);
-    return LIGHTCURVE_MAD_TO_SIGMA * lightcurve_mad(scratch, count, middle, more) / sqrt(2.0);
-}
-
-/* A single point that stands far above the median of the five around it, as a particle's hit does.
- * Low points are never taken for outliers here. */
-static bool is_spike(const struct task *task, size_t i, double sigma)
-{
-    double near[5];
-    size_t low = i >= task->first + 2 ? i - 2 : task->first, count = 0;
-    for (size_t j = low; j < task->end && j <= i + 2; j++)
-        near[count++] = task->flux[j];
-    return sigma > 0.0 && task->flux[i] - lightcurve_median(near, count) > OUTLIER_SIGMAS * sigma;
-}
-
-static bool is_beside(const struct task *task, size_t i)
-{
-    double away = AWAY_LENGTHS * (task->ends_d - task->starts_d);
-    return task->time[i] < task->starts_d - away || task->time[i] > task->ends_d + away;
-}
-
-/* The band of flux that points well beside the interval must lie in, so that a neighbouring dip
- * does not pull the level. Infinite where too many would be lost. */
-static void find_band(const struct task *task, double sigma, double *values, double *scratch,
-                      double *low, double *high)
-{
-    size_t count = 0, lost = 0;
-    *low = -INFINITY;
-    *high = INFINITY;
-    for (size_t i = task->first; i < task->end; i++)
-        if (is_beside(task, i))
-            values[count++] = task->flux[i];
-    if (count == 0)
-        return;
-    double middle = lightcurve_median(values, count);
-    double spread = LIGHTCURVE_MAD_TO_SIGMA * lightcurve_mad(values, count, middle, scratch);
-    double reach = OUTLIER_SIGMAS * fmax(spread, sigma);
-    for (size_t i = 0; i < count; i++)
-        lost += fabs(values[i] - middle) > reach;
-    if (!(reach > 0.0) || (double)lost > OUTLIERS_MOST * (double)count)
-        return;
-    *low = middle - reach;
-    *high = middle + reach;
-}
-
-/* Average neighbours so that about POINTS_FITTED_MOST are left; never across a break. */
-static void average_down(struct dip_points *points)
-{
-    size_t held = (points->count + POINTS_FITTED_MOST - 1) / POINTS_FITTED_MOST;
-    if (held <= 1)
-        return;
-    double longest = 2.0 * (double)held * points->cadence_d;
-    size_t made = 0;
-    for (size_t i = 0, end; i < points->count; i = end) {
-        double weight = 0.0, time = 0.0, flux = 0.0, starts = points->time[i];
-        for (end = i; end < points->count && end < i + held; end++) {
-            if (points->time[end] - starts > longest)
-                break;
-            weight += points->weight[end];
-            time += points->weight[end] * (points->time[end] - starts);
-            flux += points->weight[end] * points->flux[end];
-        }
-        points->time[made] = starts + time / weight;
-        points->flux[made] = flux / weight;
-        points->weight[made++] = weight;
-    }
-    points->count = made;
-    points->cadence_d *= (double)held;
-}
-
-/* Errors as weights. Given errors keep their ratios, and their median becomes sigma. */
-static void weigh(const struct task *task, double sigma, double *scratch, struct dip_points *points,
-                  const size_t *place)
-{
-    double unit = 1.0;
-    if (task->error != NULL) {
-        for (size_t i = 0; i < points->count; i++)
-            scratch[i] = task->error[place[i]];
-        unit = lightcurve_median(scratch, points->count);
-    }
-    for (size_t i = 0; i < points->count; i++) {
-        double error = task->error != NULL ? task->error[place[i]] / unit * sigma : sigma;
-        points->weight[i] = error > 0.0 && isfinite(error) ? 1.0 / (error * error) : 0.0;
-    }
-}
-
-/* Count time from the weighted mean, and see whether there is data on both sides. */
-static void centre(const struct task *task, struct dip_points *points)
-{
-    double weight = 0.0, moment = 0.0, first = points->time[0];
-    for (size_t i = 0; i < points->count; i++) {
-        weight += points->weight[i];
-        moment += points->weight[i] * (points->time[i] - first);
-    }
-    points->origin_d = first + moment / weight;
-    for (size_t i = 0; i < points->count; i++)
-        points->time[i] -= points->origin_d;
-    double starts = task->starts_d - points->origin_d, ends = task->ends_d - points->origin_d;
-    double least = SIDE_LENGTH_LEAST * (ends - starts);
-    size_t n = points->count, before = 0, after = 0;
-    while (before < n && points->time[before] < starts)
-        before++;
-    while (after < n && points->time[n - 1 - after] > ends)
-        after++;
-    points->slope = before >= SIDE_POINTS_LEAST && after >= SIDE_POINTS_LEAST &&
-                    starts - points->time[0] >= least && points->time[n - 1] - ends >= least;
-}
-
-/* Gather the points to fit. `room` holds 5 x (end - first) values, `place` end - first. */
-static void gather(struct task *task, double *room, size_t *place, struct dip_points *points)
-{
-    size_t most = task->end - task->first;
-    double *scratch = room + 3 * most, *more = room + 4 * most;
-    *points = (struct dip_points){.time = room, .flux = room + most, .weight = room + 2 * most};
-    task->cadence_d = points->cadence_d = usual_step(task, scratch);
-    double sigma = usual_noise(task, scratch, more), low, high;
-    find_band(task, sigma, scratch, more, &low, &high);
-    for (size_t i = task->first; i < task->end; i++) {
-        bool outside = task->flux[i] < low || task->flux[i] > high;
-        if ((outside && is_beside(task, i)) || is_spike(task, i, sigma))
-            continue;
-        points->time[points->count] = task->time[i];
-        points->flux[points->count] = task->flux[i];
-        place[points->count++] = i;
-    }
-    points->scaled = sigma > 0.0;
-    weigh(task, points->scaled ? sigma : 1.0, scratch, points, place);
-    average_down(points);
-    centre(task, points);
-}
-
-static struct dip_bounds bounds_of(const struct task *task, const struct dip_points *points)
+static struct dip_bounds bounds_of(const struct dip_task *task, const struct dip_points *points)
 {
     double starts = task->starts_d - points->origin_d, ends = task->ends_d - points->origin_d;
     double length = ends - starts;
@@ -234,19 +26,14 @@ static struct dip_bounds bounds_of(const struct task *task, const struct dip_poi
 
 /* ---- what the fit says ------------------------------------------------------------------- */
 
-static void take_nothing(const struct task *task, const struct dip_points *points,
+static void take_nothing(const struct dip_task *task, const struct dip_points *points,
                          struct lightcurve_dip *out)
 {
-    double weight = 0.0, flux = 0.0;
-    for (size_t i = 0; i < points->count; i++) {
-        weight += points->weight[i];
-        flux += points->weight[i] * points->flux[i];
-    }
     out->shape = LIGHTCURVE_DIP_BOX;
     out->mid_d = 0.5 * (task->starts_d + task->ends_d);
     out->duration_d = task->ends_d - task->starts_d;
     out->depth = 0.0;
-    out->level = flux / weight;
+    out->level = points->base;
     out->slope = 0.0;
     out->ingress_fraction = 0.0;
 }
@@ -278,7 +65,7 @@ static void take_box(const struct dip_points *points, const struct dip_box *box,
     out->duration_d = box->ends_d - box->starts_d;
     out->duration_error_d = edges;
     out->ingress_fraction = 0.0;
-    out->level = box->level + box->slope * mid;
+    out->level = points->base + box->level + box->slope * mid;
     out->slope = box->slope;
     out->depth = box->depth / out->level;
     out->depth_error = box->depth_error / out->level;
@@ -304,7 +91,7 @@ static void take_trapezoid(const struct dip_points *points, const struct dip_box
     out->duration_d = value[DIP_LENGTH];
     out->duration_error_d = error_of(fit, DIP_LENGTH);
     out->ingress_fraction = value[DIP_INGRESS];
-    out->level = value[DIP_LEVEL];
+    out->level = points->base + value[DIP_LEVEL];
     out->slope = value[DIP_SLOPE];
     out->depth = value[DIP_DEPTH] / out->level;
     double variance = fit->covariance[DIP_DEPTH][DIP_DEPTH] -
@@ -314,37 +101,35 @@ static void take_trapezoid(const struct dip_points *points, const struct dip_box
     out->chi2 = fit->chi2;
 }
 
-/* Let the errors of length and depth hold what an ingress that can hardly be seen leaves open. A
- * box's own errors know nothing of it; a trapezoid's do, as far as its curvature tells. */
+/* Let the errors hold what an ingress that can hardly be seen leaves open. A box's own errors know
+ * nothing of it; a trapezoid's do, as far as its curvature tells. */
 static void widen_errors(const struct dip_points *points, const struct dip_bounds *bounds,
                          const struct dip_box *box, struct lightcurve_dip *dip)
 {
-    double longer, deeper;
-    struct dip_kept kept = {dip->duration_d, dip->depth * dip->level, dip->chi2};
-    dip_trapezoid_spread(points, bounds, box, &kept, unit_of(points, dip->chi2), &longer, &deeper);
-    deeper /= dip->level;
-    if (dip->shape == LIGHTCURVE_DIP_BOX) {
-        dip->duration_error_d = hypot(dip->duration_error_d, longer);
-        dip->depth_error = hypot(dip->depth_error, deeper);
-    } else {
-        dip->duration_error_d = fmax(dip->duration_error_d, longer);
-        dip->depth_error = fmax(dip->depth_error, deeper);
-    }
+    struct dip_kept kept = {dip->mid_d - points->origin_d, dip->duration_d, dip->depth * dip->level,
+                            dip->chi2};
+    struct dip_spread spread =
+        dip_trapezoid_spread(points, bounds, box, &kept, unit_of(points, dip->chi2));
+    bool boxed = dip->shape == LIGHTCURVE_DIP_BOX;
+    double (*join)(double, double) = boxed ? hypot : fmax;
+    dip->mid_error_d = join(dip->mid_error_d, spread.mid_d);
+    dip->duration_error_d = join(dip->duration_error_d, spread.length_d);
+    dip->depth_error = join(dip->depth_error, spread.depth / dip->level);
 }
 
-static size_t points_within(const struct task *task, double mid_d, double length_d)
+static size_t points_within(const struct dip_task *task, double mid_d, double length_d)
 {
     double starts = mid_d - 0.5 * length_d, ends = mid_d + 0.5 * length_d;
-    return first_not_before(task->time, task->n, nextafter(ends, INFINITY)) -
-           first_not_before(task->time, task->n, starts);
+    return dip_first_not_before(task->time, task->n, nextafter(ends, INFINITY)) -
+           dip_first_not_before(task->time, task->n, starts);
 }
 
 /* How much of T14 lies within half a cadence of a point. */
-static double covered_share(const struct task *task, const struct lightcurve_dip *dip)
+static double covered_share(const struct dip_task *task, const struct lightcurve_dip *dip)
 {
     double starts = dip->mid_d - 0.5 * dip->duration_d, ends = dip->mid_d + 0.5 * dip->duration_d;
     double half = 0.5 * task->cadence_d, covered = 0.0, until = starts;
-    for (size_t i = first_not_before(task->time, task->n, starts - half);
+    for (size_t i = dip_first_not_before(task->time, task->n, starts - half);
          i < task->n && task->time[i] <= ends + half; i++) {
         double from = fmax(task->time[i] - half, until), to = fmin(task->time[i] + half, ends);
         if (to > from)
@@ -355,10 +140,10 @@ static double covered_share(const struct task *task, const struct lightcurve_dip
 }
 
 /* From `at` to the nearest gap or end of data in the direction of step; 0 when `at` lies in one. */
-static double room_before_gap(const struct task *task, double at, bool forward)
+static double room_before_gap(const struct dip_task *task, double at, bool forward)
 {
     const double *time = task->time;
-    size_t after = first_not_before(time, task->n, at);
+    size_t after = dip_first_not_before(time, task->n, at);
     if (after == 0 || after == task->n)
         return 0.0;
     if (time[after] > at && time[after] - time[after - 1] > task->gap_d)
@@ -380,7 +165,8 @@ static double asymmetry_of(const struct dip_points *points, const struct lightcu
         if (fabs(since) > 0.5 * dip->duration_d)
             continue;
         int half = since > 0.0;
-        sum[half] += points->weight[i] * (points->flux[i] - dip->level - dip->slope * since);
+        sum[half] +=
+            points->weight[i] * (points->base + points->flux[i] - dip->level - dip->slope * since);
         weight[half] += points->weight[i];
     }
     if (weight[0] <= 0.0 || weight[1] <= 0.0 || dip->depth == 0.0)
@@ -390,7 +176,7 @@ static double asymmetry_of(const struct dip_points *points, const struct lightcu
 
 /* Errors from the curvature assume white noise of the size given. They grow by what the windows
  * show above that, or by the scatter about the fit, whichever is more. */
-static void scale_errors(const struct task *task, const struct dip_points *points,
+static void scale_errors(const struct dip_task *task, const struct dip_points *points,
                          struct lightcurve_dip *out)
 {
     double factor = sqrt(unit_of(points, out->chi2));
@@ -432,43 +218,43 @@ static void nothing_measured(struct lightcurve_dip *out)
                                    .asymmetry = NAN};
 }
 
-/* Fit and fill `out`. False when out of memory. */
-static bool measure(struct task *task, double *room, size_t *place, struct lightcurve_dip *out)
+/* What follows from the shape that was kept. */
+static void fill_rest(const struct dip_task *task, const struct dip_points *points,
+                      struct lightcurve_dip *out)
 {
-    struct dip_points points;
-    struct dip_box box;
-    struct dip_trapezoid trapezoid;
-    gather(task, room, place, &points);
-    if (points.count < POINTS_LEAST)
-        return true;
-    struct dip_bounds bounds = bounds_of(task, &points);
-    if (!dip_box_search(&points, &bounds, &box))
-        return false;
-    if (!box.found) {
-        take_nothing(task, &points, out);
-    } else {
-        dip_trapezoid_fit(&points, &bounds, &box, &trapezoid);
-        out->chi2_box = box.chi2;
-        if (is_trapezoid(&points, &box, &trapezoid))
-            take_trapezoid(&points, &box, &trapezoid, out);
-        else
-            take_box(&points, &box, out);
-        widen_errors(&points, &bounds, &box, out);
-    }
-    if (!(out->level > 0.0)) {
-        nothing_measured(out);
-        return true;
-    }
     out->points = task->end - task->first;
     out->points_in = points_within(task, out->mid_d, out->duration_d);
     out->covered = covered_share(task, out);
-    scale_errors(task, &points, out);
+    scale_errors(task, points, out);
     double starts = out->mid_d - 0.5 * out->duration_d, ends = out->mid_d + 0.5 * out->duration_d;
     out->gap_distance_d =
         fmin(room_before_gap(task, starts, false), room_before_gap(task, ends, true));
     out->v_shape = 2.0 * out->ingress_fraction;
-    out->asymmetry = asymmetry_of(&points, out);
-    return true;
+    out->asymmetry = asymmetry_of(points, out);
+}
+
+static void measure(const struct dip_task *task, const struct dip_points *points,
+                    struct lightcurve_dip *out)
+{
+    struct dip_bounds bounds = bounds_of(task, points);
+    struct dip_box box;
+    struct dip_trapezoid trapezoid;
+    dip_box_search(points, &bounds, &box);
+    if (!box.found) {
+        take_nothing(task, points, out);
+    } else {
+        dip_trapezoid_fit(points, &bounds, &box, &trapezoid);
+        out->chi2_box = box.chi2;
+        if (is_trapezoid(points, &box, &trapezoid))
+            take_trapezoid(points, &box, &trapezoid, out);
+        else
+            take_box(points, &box, out);
+        widen_errors(points, &bounds, &box, out);
+    }
+    if (out->level > 0.0)
+        fill_rest(task, points, out);
+    else
+        nothing_measured(out);
 }
 
 bool lightcurve_dip_measure(const double *time, const double *flux, const double *error, size_t n,
@@ -476,27 +262,25 @@ bool lightcurve_dip_measure(const double *time, const double *flux, const double
                             const struct lightcurve_noise *noise, struct lightcurve_dip *out,
                             struct base_error *err)
 {
-    struct task task = {.time = time,
-                        .flux = flux,
-                        .error = error,
-                        .n = n,
-                        .gap_d = gap_d,
-                        .starts_d = starts_d,
-                        .ends_d = ends_d,
-                        .noise = noise};
+    struct dip_task task = {.time = time,
+                            .flux = flux,
+                            .error = error,
+                            .n = n,
+                            .gap_d = gap_d,
+                            .starts_d = starts_d,
+                            .ends_d = ends_d,
+                            .noise = noise};
+    struct dip_points points;
     nothing_measured(out);
-    if (!choose_points(&task))
+    if (!dip_points_choose(&task))
         return true;
-    size_t most = task.end - task.first;
-    double *room = calloc(most, 5 * sizeof *room);
-    size_t *place = calloc(most, sizeof *place);
-    bool ok = room != NULL && place != NULL && measure(&task, room, place, out);
-    if (!ok) {
-        nothing_measured(out);
-        base_fail(err, BASE_MEMORY, "Not enough memory to measure a dip over %zu points.", most);
-    }
-    free(place);
-    free(room);
+    bool ok = dip_points_gather(&task, &points);
+    if (!ok)
+        base_fail(err, BASE_MEMORY, "Not enough memory to measure a dip over %zu points.",
+                  task.end - task.first);
+    else if (points.count >= DIP_POINTS_LEAST)
+        measure(&task, &points, out);
+    dip_points_free(&points);
     return ok;
 }
 

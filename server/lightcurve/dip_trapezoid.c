@@ -1,6 +1,8 @@
 /*
  * The trapezoid fit: Levenberg-Marquardt in all six parameters with exact derivatives, from several
- * ingress fractions, since chi2 has kinks where a contact passes a point.
+ * ingress fractions, since chi2 has kinks where a contact passes a point. Where the shape is
+ * constant, outside and on the floor, sums come from the points' running totals; only the points on
+ * the ramps are visited.
  */
 #include <math.h>
 #include <string.h>
@@ -9,7 +11,7 @@
 
 #define ROUNDS_MOST 100
 #define SHAKES_MOST 4
-#define SPREAD_STEPS 5
+#define SPREAD_STEPS 10
 #define SHAKE_LEAST 1e-3 /* a smaller gain in chi2 ends the shaking */
 #define SETTLED 1e-10    /* relative change of chi2 that ends the rounds */
 #define DAMPING_MOST 1e12
@@ -38,38 +40,83 @@ double dip_trapezoid_shape(double since_mid_d, double length_d, double ingress_f
     return inside >= ramp ? 1.0 : inside / ramp;
 }
 
-/* chi2 at p; with `normal` not NULL also the normal matrix and the gradient's descent direction. */
-static double chi2_at(const struct dip_points *points, const vector p, matrix normal, vector down)
+/* chi2 with the normal matrix (lower triangle) and the gradient's descent direction. */
+struct slope_of_chi2 {
+    double chi2;
+    matrix normal;
+    vector down;
+};
+
+/* Add the points [first, end), over all of which the shape is `shape`, 0 or 1. */
+static void add_constant(const struct dip_points *points, const vector p, size_t first, size_t end,
+                         double shape, struct slope_of_chi2 *at)
 {
-    double chi2 = 0.0, ramp = p[DIP_INGRESS] * p[DIP_LENGTH];
-    if (normal != NULL) {
-        memset(normal, 0, sizeof(matrix));
-        memset(down, 0, sizeof(vector));
+    const struct dip_sums *from = &points->total[first], *to = &points->total[end];
+    double mid = p[DIP_MID], level = p[DIP_LEVEL] - p[DIP_DEPTH] * shape, slope = p[DIP_SLOPE];
+    double w = to->w - from->w, wt = to->wt - from->wt, wf = to->wf - from->wf;
+    double ws = wt - mid * w; /* s: time since the middle */
+    double wss = to->wtt - from->wtt - 2.0 * mid * wt + mid * mid * w;
+    double wfs = to->wft - from->wft - mid * wf;
+    double r = wf - level * w - slope * ws, rs = wfs - level * ws - slope * wss;
+    at->chi2 += to->wff - from->wff - level * wf - slope * wfs - level * r - slope * rs;
+    at->down[DIP_MID] -= slope * r;
+    at->down[DIP_DEPTH] -= shape * r;
+    at->down[DIP_LEVEL] += r;
+    at->normal[DIP_MID][DIP_MID] += slope * slope * w;
+    at->normal[DIP_DEPTH][DIP_MID] += slope * shape * w;
+    at->normal[DIP_DEPTH][DIP_DEPTH] += shape * w;
+    at->normal[DIP_LEVEL][DIP_MID] -= slope * w;
+    at->normal[DIP_LEVEL][DIP_DEPTH] -= shape * w;
+    at->normal[DIP_LEVEL][DIP_LEVEL] += w;
+    if (points->slope) {
+        at->down[DIP_SLOPE] += rs;
+        at->normal[DIP_SLOPE][DIP_MID] -= slope * ws;
+        at->normal[DIP_SLOPE][DIP_DEPTH] -= shape * ws;
+        at->normal[DIP_SLOPE][DIP_LEVEL] += ws;
+        at->normal[DIP_SLOPE][DIP_SLOPE] += wss;
     }
-    for (size_t i = 0; i < points->count; i++) {
+}
+
+/* Add the points [first, end), which lie on a ramp. */
+static void add_ramp(const struct dip_points *points, const vector p, size_t first, size_t end,
+                     struct slope_of_chi2 *at)
+{
+    double ramp = p[DIP_INGRESS] * p[DIP_LENGTH];
+    for (size_t i = first; i < end; i++) {
         double since = points->time[i] - p[DIP_MID], w = points->weight[i];
         double shape = dip_trapezoid_shape(since, p[DIP_LENGTH], p[DIP_INGRESS]);
         double line = p[DIP_LEVEL] + p[DIP_SLOPE] * since;
         double r = points->flux[i] - line + p[DIP_DEPTH] * shape;
-        chi2 += w * r * r;
-        if (normal == NULL)
-            continue;
-        vector slope_of = {[DIP_MID] = -p[DIP_SLOPE],
+        vector slope_of = {[DIP_MID] = -p[DIP_SLOPE] - p[DIP_DEPTH] * copysign(1.0, since) / ramp,
+                           [DIP_LENGTH] = -p[DIP_DEPTH] * (0.5 / ramp - shape / p[DIP_LENGTH]),
+                           [DIP_INGRESS] = p[DIP_DEPTH] * shape / p[DIP_INGRESS],
                            [DIP_DEPTH] = -shape,
                            [DIP_LEVEL] = 1.0,
                            [DIP_SLOPE] = points->slope ? since : 0.0};
-        if (shape > 0.0 && shape < 1.0) {
-            slope_of[DIP_MID] -= p[DIP_DEPTH] * copysign(1.0, since) / ramp;
-            slope_of[DIP_LENGTH] = -p[DIP_DEPTH] * (0.5 / ramp - shape / p[DIP_LENGTH]);
-            slope_of[DIP_INGRESS] = p[DIP_DEPTH] * shape / p[DIP_INGRESS];
-        }
+        at->chi2 += w * r * r;
         for (int a = 0; a < DIP_PARAMETERS; a++) {
-            down[a] += w * r * slope_of[a];
+            at->down[a] += w * r * slope_of[a];
             for (int b = 0; b <= a; b++)
-                normal[a][b] += w * slope_of[a] * slope_of[b];
+                at->normal[a][b] += w * slope_of[a] * slope_of[b];
         }
     }
-    return chi2;
+}
+
+static void look_at(const struct dip_points *points, const vector p, struct slope_of_chi2 *at)
+{
+    double half = 0.5 * p[DIP_LENGTH], floor = half - p[DIP_INGRESS] * p[DIP_LENGTH];
+    const double contact[] = {-half, -floor, floor, half};
+    size_t edge[6] = {0};
+    edge[5] = points->count;
+    for (int c = 0; c < 4; c++)
+        edge[c + 1] = dip_first_not_before(points->time, points->count, p[DIP_MID] + contact[c]);
+    *at = (struct slope_of_chi2){0};
+    add_constant(points, p, edge[0], edge[1], 0.0, at);
+    add_ramp(points, p, edge[1], edge[2], at);
+    add_constant(points, p, edge[2], edge[3], 1.0, at);
+    add_ramp(points, p, edge[3], edge[4], at);
+    add_constant(points, p, edge[4], edge[5], 0.0, at);
+    at->chi2 = fmax(at->chi2, 0.0); /* rounding */
 }
 
 /* Cholesky factor in place of the lower triangle, leaving out parameters that are held. False when
@@ -140,27 +187,28 @@ static bool step_from(const vector p, matrix normal, const vector down,
 /* Walk p downhill; returns chi2 there. */
 static double descend(const struct dip_points *points, const struct limits *limits, vector p)
 {
-    matrix normal;
-    vector down, next;
+    struct slope_of_chi2 here, there;
+    vector next;
     bool held[DIP_PARAMETERS];
-    double damping = 1e-3, chi2 = chi2_at(points, p, normal, down);
+    double damping = 1e-3;
+    look_at(points, p, &here);
     for (int round = 0; round < ROUNDS_MOST && damping < DAMPING_MOST; round++) {
-        find_held(points, limits, p, down, held);
-        double there = INFINITY;
-        if (step_from(p, normal, down, held, damping, limits, next))
-            there = chi2_at(points, next, NULL, NULL);
-        if (!(there < chi2)) {
+        find_held(points, limits, p, here.down, held);
+        there.chi2 = INFINITY;
+        if (step_from(p, here.normal, here.down, held, damping, limits, next))
+            look_at(points, next, &there);
+        if (!(there.chi2 < here.chi2)) {
             damping *= 10.0;
             continue;
         }
-        bool settled = chi2 - there <= SETTLED * chi2 && damping <= 1e-3;
+        bool settled = here.chi2 - there.chi2 <= SETTLED * here.chi2 && damping <= 1e-3;
         memcpy(p, next, sizeof next);
+        here = there;
         damping = fmax(damping * 0.1, 1e-12);
-        chi2 = chi2_at(points, p, normal, down);
         if (settled)
             break;
     }
-    return chi2;
+    return here.chi2;
 }
 
 /* The covariance at out->value. Where points are missing on the floor or on the ramps, ingress and
@@ -168,16 +216,16 @@ static double descend(const struct dip_points *points, const struct limits *limi
 static void find_covariance(const struct dip_points *points, const struct limits *limits,
                             struct dip_trapezoid *out)
 {
-    matrix normal, factor;
-    vector down;
+    struct slope_of_chi2 here;
+    matrix factor;
     bool held[DIP_PARAMETERS];
-    chi2_at(points, out->value, normal, down);
-    find_held(points, limits, out->value, down, held);
-    memcpy(factor, normal, sizeof factor);
+    look_at(points, out->value, &here);
+    find_held(points, limits, out->value, here.down, held);
+    memcpy(factor, here.normal, sizeof factor);
     bool regular = factorise(factor, held);
     if (!regular && !held[DIP_INGRESS]) {
         held[DIP_INGRESS] = true;
-        memcpy(factor, normal, sizeof factor);
+        memcpy(factor, here.normal, sizeof factor);
         regular = factorise(factor, held);
     }
     for (int a = 0; a < DIP_PARAMETERS; a++) {
@@ -284,25 +332,29 @@ void dip_trapezoid_fit(const struct dip_points *points, const struct dip_bounds 
         shake(points, &limits, box, out);
 }
 
-void dip_trapezoid_spread(const struct dip_points *points, const struct dip_bounds *bounds,
-                          const struct dip_box *box, const struct dip_kept *kept, double unit,
-                          double *length_spread, double *depth_spread)
+struct dip_spread dip_trapezoid_spread(const struct dip_points *points,
+                                       const struct dip_bounds *bounds, const struct dip_box *box,
+                                       const struct dip_kept *kept, double unit)
 {
-    double weights = 1.0, lengths = 0.0, depths = 0.0;
+    struct dip_spread sum = {0};
+    struct limits limits = limits_of(points, bounds, box);
+    double weights = 1.0;
+    vector p;
+    start_from(box, 0.0, p);
     for (int step = 1; step <= SPREAD_STEPS; step++) {
-        struct limits limits = limits_of(points, bounds, box);
         double ingress = 0.5 * step / SPREAD_STEPS;
         limits.least[DIP_INGRESS] = limits.most[DIP_INGRESS] = ingress;
-        vector p;
-        start_from(box, ingress, p);
+        p[DIP_LENGTH] *= (1.0 - p[DIP_INGRESS]) / (1.0 - ingress); /* as wide at half depth */
         clamp(&limits, p);
         double worse = descend(points, &limits, p) - kept->chi2;
         double weight = exp(-0.5 * fmax(worse / unit, 0.0));
-        double longer = p[DIP_LENGTH] - kept->length_d, deeper = p[DIP_DEPTH] - kept->depth;
+        double later = p[DIP_MID] - kept->mid_d, longer = p[DIP_LENGTH] - kept->length_d;
+        double deeper = p[DIP_DEPTH] - kept->depth;
         weights += weight;
-        lengths += weight * longer * longer;
-        depths += weight * deeper * deeper;
+        sum.mid_d += weight * later * later;
+        sum.length_d += weight * longer * longer;
+        sum.depth += weight * deeper * deeper;
     }
-    *length_spread = sqrt(lengths / weights);
-    *depth_spread = sqrt(depths / weights);
+    return (struct dip_spread){sqrt(sum.mid_d / weights), sqrt(sum.length_d / weights),
+                               sqrt(sum.depth / weights)};
 }

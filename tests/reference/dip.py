@@ -194,6 +194,33 @@ def snr_is_depth_over_the_error_of_the_mean():
         check(f'dips simulated with SNR {snr:.0f} are measured with it', abs(mean / snr - 1) < 0.12, mean)
 
 
+def injected_transits_are_measured_as_they_were_put_in():
+    """Limb-darkened transits drawn for controls, put into white noise, measured from a hurried box. The
+    drawn SNR and the measured one are to be the same quantity."""
+    rng = np.random.default_rng(1010)
+    cadence, sigma = 2 / 1440, 8e-4
+    time = np.arange(0, 15, cadence)
+    flux = [1 + rng.normal(0, sigma, len(time)) for _ in range(240)]
+    heads = [data_lines(time, f) + [f'white {sigma} {cadence}', f'inject {seed} {cadence}']
+             for seed, f in enumerate(flux, 1)]
+    drawn = np.array(ask(sum(heads, [])))
+    lines, kept = [], []
+    for head, (mid, duration, _, snr) in zip(heads, drawn):
+        if snr > 8 and duration / 2 + 0.3 < mid < 14.7 - duration / 2:
+            starts, ends = sloppy(rng, mid, duration)
+            lines += head + [f'dip {starts!r} {ends!r} 0.5']
+            kept.append((mid, duration, _, snr))
+    dips, kept = as_dips(ask(lines)[1::2]), np.array(kept)
+    ratio = np.array([d['snr'] for d in dips]) / kept[:, 3]
+    check('the SNR of injected transits is measured as it was drawn, to 8 % in the median',
+          abs(np.median(ratio) - 1) < 0.08 and len(kept) > 30, f'{np.median(ratio):.3f} of {len(kept)}')
+    off = np.array([(d['mid'] - m) / d['mid_error'] for d, m in zip(dips, kept[:, 0])])
+    low, high = np.percentile(off, [15.87, 84.13])
+    check('pulls of mid-times of injected transits scatter by 1',
+          0.8 < (high - low) / 2 < 1.25 and 0.8 < np.clip(off, -5, 5).std() < 1.25,
+          f'{(high - low) / 2:.3f}, {np.clip(off, -5, 5).std():.3f}')
+
+
 def noise_alone_is_not_taken_for_a_dip():
     """Intervals laid at random on white noise. The best of many boxes near each always stands out a
     little; common practice, no source: seldom by more than five sigma."""
@@ -398,6 +425,7 @@ def real_fits_agree(time, flux, cadence, mids, duration):
 fit_is_the_least_squares_fit()
 errors_have_the_right_size()
 snr_is_depth_over_the_error_of_the_mean()
+injected_transits_are_measured_as_they_were_put_in()
 noise_alone_is_not_taken_for_a_dip()
 noise_agrees_with_numpy()
 correlated_noise_counts()

@@ -10,12 +10,16 @@
  *   white POINT CADENCE  sets the noise at hand: white, windows to match
  *   dip STARTS ENDS GAP  -> shape mid mid_error duration duration_error ingress depth depth_error
  *                           level slope snr chi2 chi2_box points points_in covered
+ *   inject SEED CADENCE  puts a drawn transit into the light curve, with the noise at hand
+ *                        -> mid duration depth snr, of its first transit on the data
  */
 #include <math.h>
 #include <stdio.h>
 #include <stdlib.h>
 
 #include "ebbmark/clock.h"
+#include "ebbmark/injection.h"
+#include "ebbmark/lightcurve_inject.h"
 #include "ebbmark/lightcurve_measure.h"
 
 struct desk {
@@ -115,6 +119,40 @@ static void measure_dip(struct desk *desk, double starts, double ends, double ga
     print_values(values, sizeof values / sizeof values[0]);
 }
 
+static double noise_of_mean(const void *context, double duration_d)
+{
+    const struct lightcurve_noise *noise = context;
+    return lightcurve_noise_of_mean(noise, duration_d,
+                                    (size_t)fmax(duration_d / noise->cadence_d, 1.0));
+}
+
+static void inject(struct desk *desk, unsigned long seed, double cadence)
+{
+    struct ephemeris_injection_host host = {.time = desk->time,
+                                            .count = desk->n,
+                                            .cadence_d = cadence,
+                                            .exposure_d = cadence,
+                                            .density_solar = NAN,
+                                            .u1 = EPHEMERIS_INJECTION_U1,
+                                            .u2 = EPHEMERIS_INJECTION_U2,
+                                            .noise_of_mean = noise_of_mean,
+                                            .context = &desk->noise};
+    struct ephemeris_injection drawn;
+    struct base_error error;
+    gsl_rng *generator = gsl_rng_alloc(gsl_rng_mt19937);
+    if (generator == NULL)
+        stop("out of memory");
+    gsl_rng_set(generator, seed);
+    must(ephemeris_injection_draw(&host, generator, &drawn, &error), &error);
+    gsl_rng_free(generator);
+    ephemeris_transit_curve(&drawn.transit, desk->time, desk->n, desk->trend);
+    lightcurve_inject(desk->flux, desk->trend, desk->n, desk->flux);
+    double first;
+    ephemeris_transits_within(&drawn.transit, desk->time[0], desk->time[desk->n - 1], &first);
+    const double values[] = {first, drawn.duration_d, drawn.depth, drawn.snr};
+    print_values(values, sizeof values / sizeof values[0]);
+}
+
 static void obey(struct desk *desk, const char *line)
 {
     size_t n;
@@ -136,6 +174,8 @@ static void obey(struct desk *desk, const char *line)
         measure_noise(desk, a, b);
     } else if (sscanf(line, "white %lf %lf", &a, &b) == 2) {
         set_white(desk, a, b);
+    } else if (sscanf(line, "inject %zu %lf", &n, &a) == 2) {
+        inject(desk, n, a);
     } else if (sscanf(line, "dip %lf %lf %lf", &a, &b, &c) == 3) {
         measure_dip(desk, a, b, c);
     } else {
