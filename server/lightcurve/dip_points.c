@@ -146,13 +146,14 @@ static void weigh(const struct dip_task *task, double sigma, double *scratch,
                   struct dip_points *points, const size_t *place)
 {
     double unit = NAN;
-    if (task->error != NULL && points->count > 0) {
+    bool given = task->error != NULL && points->count > 0;
+    if (given) {
         for (size_t i = 0; i < points->count; i++)
             scratch[i] = task->error[place[i]];
         unit = lightcurve_median(scratch, points->count);
     }
     for (size_t i = 0; i < points->count; i++) {
-        double ratio = unit > 0.0 ? task->error[place[i]] / unit : 1.0;
+        double ratio = given && unit > 0.0 ? task->error[place[i]] / unit : 1.0;
         double error = ratio > 0.0 && isfinite(ratio) ? ratio * sigma : sigma;
         points->weight[i] = 1.0 / (error * error);
     }
