@@ -9,6 +9,7 @@
 #include <string.h>
 
 #include "ebbmark/consensus_model.h"
+#include "input.h"
 #include "interval.h"
 
 #define PRIOR_LOOKS 4.0 /* weight of the crowd's rate against a reviewer's own, in looks */
@@ -25,18 +26,6 @@ struct fit {
     double *other_looks, *other_marks;
     double crowd_hit, crowd_chance, prior;
 };
-
-static bool in_range(const struct consensus_input *input, struct base_error *error)
-{
-    for (size_t i = 0; i < input->item_count; i++)
-        if (input->items[i].first_look > input->look_count ||
-            input->items[i].looks > input->look_count - input->items[i].first_look)
-            return base_fail(error, BASE_INVALID, "The looks of group %zu are out of range.", i);
-    for (size_t i = 0; i < input->look_count; i++)
-        if (input->looks[i].person < 0 || (size_t)input->looks[i].person >= input->people)
-            return base_fail(error, BASE_INVALID, "The reviewer of look %zu is out of range.", i);
-    return true;
-}
 
 static double clamped(const struct consensus_item *item, double probability)
 {
@@ -151,6 +140,7 @@ static struct consensus_rate rate_of(double value, double marks, double looks, d
 
 static void answer(const struct fit *fit, struct consensus_output *out)
 {
+    const struct consensus_rate unknown = {NAN, NAN, NAN};
     for (size_t i = 0; i < fit->input->item_count; i++) {
         double dip, other, prior = log(fit->prior) - log1p(-fit->prior);
         double looks = looks_term(fit, &fit->input->items[i], &dip, &other);
@@ -158,14 +148,22 @@ static void answer(const struct fit *fit, struct consensus_output *out)
                                                     .log_odds = looks + prior,
                                                     .marks_only_probability = fit->probability[i],
                                                     .term_looks = looks,
-                                                    .term_prior = prior};
+                                                    .term_prior = prior,
+                                                    .lure = 0.0,
+                                                    .nothing = 1.0 - fit->probability[i],
+                                                    .low = NAN,
+                                                    .high = NAN};
     }
     for (size_t j = 0; j < fit->input->people; j++)
         out->skills[j] = (struct consensus_skill){
             .hit = rate_of(fit->hit[j], fit->dip_marks[j], fit->dip_looks[j], fit->crowd_hit),
             .chance = rate_of(fit->chance[j], fit->other_marks[j], fit->other_looks[j],
                               fit->crowd_chance),
-            .weight = fmax(fit->hit[j] - fit->chance[j], 0.0)};
+            .weight = fmax(fit->hit[j] - fit->chance[j], 0.0),
+            .hit_snr5 = unknown,
+            .hit_snr20 = unknown,
+            .lure = unknown,
+            .chance_per_30_d = unknown};
     out->prior = fit->prior;
 }
 
@@ -190,7 +188,7 @@ bool consensus_fit_two_class(const struct consensus_input *input,
                              struct consensus_output *output, struct base_error *error)
 {
     *output = (struct consensus_output){0};
-    if (!in_range(input, error))
+    if (!input_in_range(input, error))
         return false;
     double *rates = calloc(6 * input->people + input->item_count + 1, sizeof *rates);
     output->answers = calloc(input->item_count + 1, sizeof *output->answers);

@@ -1,0 +1,150 @@
+/*
+ * The inside of a three-class fit: its arrays and its steps. Private to the room.
+ *
+ * One round: sums over all groups under the present numbers (fit_sums: the E-step, with the first
+ * and second derivatives that the M-step needs), then new numbers (fit_step). Groups and reviewers
+ * are worked on in blocks of a fixed size whose sums are added in order, so that the bits do not
+ * depend on the number of threads.
+ */
+#ifndef CONSENSUS_FIT_H
+#define CONSENSUS_FIT_H
+
+#include <math.h>
+
+#include "ebbmark/consensus_model.h"
+
+enum { FIT_DIP, FIT_LURE, FIT_NOTHING, FIT_CLASSES };
+#define FIT_TAU_LEAST 0.05
+#define FIT_TAU_MOST 3.0
+#define FIT_SIDES 2 /* the classes in which somebody was shown something: dip, lure */
+
+/* Gauss-Hermite nodes, seven and one of no weight, so that they go in pairs. */
+#define FIT_NODES 8
+typedef double fit_pack __attribute__((vector_size(16)));
+#define FIT_PACKS (FIT_NODES / 2)
+union fit_nodes {
+    double at[FIT_NODES];
+    fit_pack pack[FIT_PACKS];
+};
+
+/* One look: what it says of its reviewer in each class. */
+struct fit_pair {
+    double slope[FIT_SIDES]; /* d of the expected log-likelihood by the logit; while a group is
+                                summed, e^-logit stands here */
+    double curve[FIT_SIDES]; /* minus the second derivative, >= 0 */
+    double nothing;          /* P(nothing) where marked */
+};
+
+/* One group, beside the caller's item. */
+struct fit_group {
+    double x;        /* ln(max(SNR, 1) / 10), NAN where unknown */
+    double marks;    /* how many */
+    double sure;     /* how many of them */
+    double spread;   /* sum of squares of the centres about their mean, in durations squared */
+    double log_time; /* the part of log S that does not depend on kappa */
+    bool complete;   /* an injected dip: it is here whether it was marked or not */
+    double log_side[FIT_SIDES];      /* log of the integral over u of the looks */
+    double unseen[FIT_SIDES];        /* P(no mark at all | class) */
+    double log_class[FIT_CLASSES];   /* joint log-likelihoods; -INFINITY where ruled out */
+    double probability[FIT_CLASSES]; /* posterior */
+};
+
+/* Sums over groups that the common numbers are made of. */
+struct fit_sums {
+    double objective;                                /* without the priors */
+    double slope[FIT_SIDES], slope_curve[FIT_SIDES]; /* by beta, gamma */
+    double tau[FIT_SIDES], tau_curve[FIT_SIDES];
+    double spread, centres; /* for kappa */
+    double sure[FIT_CLASSES], marks[FIT_CLASSES];
+    double count[FIT_CLASSES], x[FIT_CLASSES], xx[FIT_CLASSES]; /* survey groups with an SNR */
+    double all[FIT_CLASSES];                                    /* survey groups */
+    double shown[FIT_SIDES]; /* the same, and those like them that nobody marked */
+    double survey;           /* number of survey groups */
+};
+
+/* Sums over reviewers. */
+struct fit_people_sums {
+    double prior;                                                     /* log of the priors */
+    double deviation[FIT_SIDES], square[FIT_SIDES], known[FIT_SIDES]; /* for means and spreads */
+    double chance_mean; /* sum of expected chance rates */
+    double chance_days; /* sum of chance rate x days */
+};
+
+#define FIT_PEOPLE_A_BLOCK 1024
+struct fit_block {
+    size_t first, count;
+};
+
+struct fit {
+    const struct consensus_input *input;
+    const struct consensus_settings *settings;
+    struct consensus_common common;
+    struct consensus_person *people;
+    struct consensus_person *people_before, *people_next; /* for stepping back */
+    struct consensus_common common_before, common_next;
+    struct fit_group *groups;
+    struct fit_pair *pairs;
+    size_t *first_of_person, *of_person; /* the looks of each person, in order */
+    struct fit_block *blocks;
+    size_t block_count, people_block_count;
+    struct fit_sums *block_sums;
+    struct fit_people_sums *people_sums;
+    struct fit_sums sums;
+    struct fit_people_sums people_sum;
+    union fit_nodes scale[FIT_SIDES]; /* e^(-tau u) */
+    bool observed; /* for intervals: slopes and curves are of the observed likelihood, see below */
+};
+
+/* While `observed`, a pair's slope is the derivative of the class's own log-likelihood, and its
+ * curve minus the second derivative of the mixture's, which may be negative for one look. */
+
+extern const union fit_nodes fit_node_u, fit_node_weight;
+
+/* Sum over all groups under the present numbers: posteriors, derivatives, objective. */
+void fit_sums(struct fit *fit);
+
+/* From the sums to people_next and common_next: one Newton step for each logit; what is common to
+ * the population moves too when `population`. */
+void fit_step(struct fit *fit, bool population);
+
+/* log of the priors at the present numbers. */
+double fit_prior(struct fit *fit);
+
+/* Where a fit starts when nothing was seen; the rates are left to the caller. */
+struct consensus_common fit_common_start(void);
+
+/* Answers and skills at the present numbers; sums once more. BASE_MEMORY. */
+bool fit_answers(struct fit *fit, struct consensus_output *output, struct base_error *error);
+
+/* x of a group for a class, or the class's mean where nothing was measured. */
+static inline double fit_x(const struct fit *fit, const struct fit_group *group, int side)
+{
+    return group->x == group->x ? group->x : fit->common.x_mean[side];
+}
+
+/* log of the normal density of x in a class; 0 where nothing was measured. */
+static inline double fit_log_density(const struct fit *fit, const struct fit_group *group,
+                                     int class)
+{
+    if (group->x != group->x)
+        return 0.0;
+    double z = (group->x - fit->common.x_mean[class]) / fit->common.x_sd[class];
+    return -0.5 * z * z - log(fit->common.x_sd[class]) - 0.9189385332046727;
+}
+
+/* log S: how well the centres of the marks agree in time. */
+static inline double fit_log_time(const struct fit *fit, const struct fit_group *group)
+{
+    double kappa = fit->common.kappa;
+    if (group->marks == 0.0)
+        return 0.0;
+    return group->log_time - (group->marks - 1.0) * log(kappa) -
+           0.5 * group->spread / (kappa * kappa);
+}
+
+static inline double fit_growth(const struct consensus_common *common, int side)
+{
+    return side == FIT_DIP ? common->beta : common->gamma;
+}
+
+#endif

@@ -1,0 +1,205 @@
+#include <math.h>
+#include <stdlib.h>
+
+#include "fit.h"
+#include "interval.h"
+
+#define Z_90 1.6448536269514722
+#define CROWD_LOOKS                                                                                \
+    4.0 /* weight of the crowd's rate in a reviewer's rate at groups that are no dip */
+
+static double logistic(double logit)
+{
+    return 1.0 / (1.0 + exp(-logit));
+}
+
+static double log_sum(double a, double b)
+{
+    double most = fmax(a, b);
+    return most == -INFINITY ? most : most + log(exp(a - most) + exp(b - most));
+}
+
+static double capped(double log_odds)
+{
+    return log_odds > 700.0 ? 700.0 : log_odds < -700.0 ? -700.0 : log_odds;
+}
+
+static struct consensus_rate rate_of_logit(double logit, double variance)
+{
+    double reach = Z_90 * sqrt(fmax(variance, 0.0));
+    return (struct consensus_rate){logistic(logit), logistic(logit - reach),
+                                   logistic(logit + reach)};
+}
+
+/* The quantile of a Gamma distribution of that shape, >= 1, and mean 1, by Wilson and Hilferty's
+ * cube. */
+static double gamma_quantile(double shape, double z)
+{
+    double root = 1.0 - 1.0 / (9.0 * shape) + z / (3.0 * sqrt(shape));
+    return root > 0.0 ? root * root * root : 0.0;
+}
+
+/* ---- reviewers ---- */
+
+/* One reviewer, beside their numbers. */
+struct share {
+    double variance[FIT_SIDES]; /* of the logits */
+    double chance;              /* expected chance marks, and the prior's one */
+    double others, other_marks; /* expected looks at groups that are no dip, and marks there */
+};
+
+static void share_variances(const struct fit *fit, struct share *shares)
+{
+    const double spread[FIT_SIDES] = {fit->common.hit_sd, fit->common.lure_sd};
+    for (size_t j = 0; j < fit->input->people; j++) {
+        double curve[FIT_SIDES] = {0.0, 0.0};
+        shares[j].chance = 1.0;
+        for (size_t k = fit->first_of_person[j]; k < fit->first_of_person[j + 1]; k++) {
+            const struct fit_pair *pair = &fit->pairs[fit->of_person[k]];
+            curve[FIT_DIP] += pair->curve[FIT_DIP];
+            curve[FIT_LURE] += pair->curve[FIT_LURE];
+            shares[j].chance += pair->nothing;
+        }
+        for (int side = 0; side < FIT_SIDES; side++)
+            shares[j].variance[side] =
+                1.0 / (fmax(curve[side], 0.0) + 1.0 / (spread[side] * spread[side]));
+    }
+}
+
+/* Looks at groups that are no dip; returns the crowd's rate of marks there. */
+static double share_others(const struct fit *fit, struct share *shares)
+{
+    const struct consensus_input *input = fit->input;
+    double looks = 1.0, marks = 0.1;
+    for (size_t g = 0; g < input->item_count; g++) {
+        double other = 1.0 - fit->groups[g].probability[FIT_DIP];
+        for (size_t k = 0; k < input->items[g].looks; k++) {
+            const struct consensus_look *look = &input->looks[input->items[g].first_look + k];
+            shares[look->person].others += other;
+            shares[look->person].other_marks += look->marked ? other : 0.0;
+            looks += other;
+            marks += look->marked ? other : 0.0;
+        }
+    }
+    return fmin(marks / looks, 1.0);
+}
+
+static struct consensus_rate rate_at_others(const struct share *share, double crowd)
+{
+    double marks = fmax(share->other_marks + CROWD_LOOKS * crowd, 1e-3);
+    double rest = fmax(share->others - share->other_marks + CROWD_LOOKS * (1.0 - crowd), 1e-3);
+    return (struct consensus_rate){marks / (marks + rest),
+                                   interval_beta_quantile(0.05, marks, rest),
+                                   interval_beta_quantile(0.95, marks, rest)};
+}
+
+static void skill_answer(const struct fit *fit, size_t j, const struct share *share, double crowd,
+                         struct consensus_skill *skill)
+{
+    const struct consensus_person *person = &fit->people[j];
+    double octave = fit->common.beta * log(2.0), per_30_d = 30.0 * exp(person->log_chance_per_d);
+    skill->hit = rate_of_logit(person->hit_logit, share->variance[FIT_DIP]);
+    skill->hit_snr5 = rate_of_logit(person->hit_logit - octave, share->variance[FIT_DIP]);
+    skill->hit_snr20 = rate_of_logit(person->hit_logit + octave, share->variance[FIT_DIP]);
+    skill->lure = rate_of_logit(person->lure_logit, share->variance[FIT_LURE]);
+    skill->chance_per_30_d =
+        (struct consensus_rate){per_30_d, per_30_d * gamma_quantile(share->chance, -Z_90),
+                                per_30_d * gamma_quantile(share->chance, Z_90)};
+    skill->chance = rate_at_others(share, crowd);
+    skill->weight = fmax(skill->hit.value - skill->chance.value, 0.0);
+}
+
+/* ---- groups ---- */
+
+/* Log odds of a dip when `less` is taken off the three joint log-likelihoods. */
+static double log_odds_without(const struct fit_group *group, const double less[FIT_CLASSES])
+{
+    return capped(group->log_class[FIT_DIP] - less[FIT_DIP] -
+                  log_sum(group->log_class[FIT_LURE] - less[FIT_LURE],
+                          group->log_class[FIT_NOTHING] - less[FIT_NOTHING]));
+}
+
+/* Variance of the log odds, from what is not known of the reviewers. */
+static double log_odds_variance(const struct fit *fit, size_t g, const struct share *shares)
+{
+    const struct consensus_item *item = &fit->input->items[g];
+    const struct fit_group *group = &fit->groups[g];
+    double not_dip = log_sum(group->log_class[FIT_LURE], group->log_class[FIT_NOTHING]);
+    double lure = exp(group->log_class[FIT_LURE] - not_dip);
+    double nothing = exp(group->log_class[FIT_NOTHING] - not_dip), sum = 0.0;
+    for (size_t k = 0; k < item->looks; k++) {
+        const struct consensus_look *look = &fit->input->looks[item->first_look + k];
+        const struct fit_pair *pair = &fit->pairs[item->first_look + k];
+        const struct share *share = &shares[look->person];
+        double by_dip = pair->slope[FIT_DIP], by_lure = lure * pair->slope[FIT_LURE];
+        sum += by_dip * by_dip * share->variance[FIT_DIP] +
+               by_lure * by_lure * share->variance[FIT_LURE];
+        if (look->marked)
+            sum += nothing * nothing / share->chance;
+    }
+    return sum;
+}
+
+static void group_answer(const struct fit *fit, size_t g, const struct share *shares, double prior,
+                         struct consensus_answer *answer)
+{
+    const struct consensus_item *item = &fit->input->items[g];
+    const struct fit_group *group = &fit->groups[g];
+    /* Without agreement in time: as if the centres lay anywhere within a duration. */
+    double duration = item->duration_d > 0.0 ? item->duration_d : 1.0;
+    double time = fit_log_time(fit, group) + fmax(group->marks - 1.0, 0.0) * log(duration);
+    double less[FIT_CLASSES] = {0.0, 0.0, 0.0};
+    answer->log_odds = log_odds_without(group, less);
+    for (int c = 0; c < FIT_CLASSES; c++)
+        less[c] += fit_log_density(fit, group, c);
+    double marks_only = log_odds_without(group, less);
+    less[FIT_DIP] += time;
+    less[FIT_LURE] += time;
+    double without_time = log_odds_without(group, less);
+    answer->term_snr = answer->log_odds - marks_only;
+    answer->term_time = marks_only - without_time;
+    answer->term_prior = log(prior) - log1p(-prior);
+    answer->term_looks = without_time - answer->term_prior;
+    answer->probability = group->probability[FIT_DIP];
+    answer->lure = group->probability[FIT_LURE];
+    answer->nothing = group->probability[FIT_NOTHING];
+    answer->marks_only_probability =
+        item->known == CONSENSUS_FREE ? logistic(marks_only) : answer->probability;
+    answer->low = answer->high = answer->probability;
+    if (item->known == CONSENSUS_FREE) {
+        double reach = Z_90 * sqrt(log_odds_variance(fit, g, shares));
+        answer->low = fmin(logistic(answer->log_odds - reach), answer->probability);
+        answer->high = fmax(logistic(answer->log_odds + reach), answer->probability);
+    }
+}
+
+/* The share of dips among survey groups, with half a group either way. */
+static double share_of_dips(const struct fit *fit)
+{
+    double dips = 0.5;
+    for (size_t g = 0; g < fit->input->item_count; g++)
+        dips += fit->input->items[g].control ? 0.0 : fit->groups[g].probability[FIT_DIP];
+    return dips / (fit->sums.survey + 1.0);
+}
+
+bool fit_answers(struct fit *fit, struct consensus_output *output, struct base_error *error)
+{
+    struct share *shares = calloc(fit->input->people + 1, sizeof *shares);
+    if (shares == NULL)
+        return base_fail(error, BASE_MEMORY, "There is no memory for the reviewers' skills.");
+    fit->observed = true;
+    fit_sums(fit);
+    share_variances(fit, shares);
+    double crowd = share_others(fit, shares);
+    for (size_t j = 0; j < fit->input->people; j++) {
+        skill_answer(fit, j, &shares[j], crowd, &output->skills[j]);
+        output->people[j] = fit->people[j];
+    }
+    output->prior = share_of_dips(fit);
+    for (size_t g = 0; g < fit->input->item_count; g++)
+        group_answer(fit, g, shares, output->prior, &output->answers[g]);
+    output->common = fit->common;
+    output->unmarked_dips = fit->sums.shown[FIT_DIP] - fit->sums.all[FIT_DIP];
+    free(shares);
+    return true;
+}

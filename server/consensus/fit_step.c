@@ -1,0 +1,208 @@
+#include <math.h>
+#include <string.h>
+
+#include "fit.h"
+
+/* What is expected before anything is seen, and how many reviewers, groups or marks it weighs. They
+ * only matter in small campaigns, where they tell a dip from a lure: dips are marked by more. */
+#define HIT_MEAN 0.5
+#define LURE_MEAN (-1.0)
+#define MEAN_SD 1.5
+#define SPREAD 0.8
+#define SPREAD_WEIGHT 4.0
+#define BETA 2.0
+#define BETA_SD 2.0
+#define GAMMA 0.0
+#define GAMMA_SD 0.5
+#define TAU 0.5
+#define TAU_SD 0.5
+#define KAPPA 0.25
+#define KAPPA_WEIGHT 4.0
+#define SURE 0.5
+#define SURE_WEIGHT 4.0
+#define X_WEIGHT 4.0
+#define X_SD_LEAST 0.15
+#define RATE_WEIGHT 0.5
+#define STEP_MOST 1.5 /* of a logit, a round */
+static const double x_mean[FIT_CLASSES] = {0.0, -0.5, -1.9};
+static const double x_sd[FIT_CLASSES] = {0.7, 0.6, 0.3};
+
+struct consensus_common fit_common_start(void)
+{
+    return (struct consensus_common){.beta = BETA,
+                                     .gamma = 0.3,
+                                     .tau_dip = 0.7,
+                                     .tau_lure = 0.7,
+                                     .kappa = KAPPA,
+                                     .hit_mean = HIT_MEAN,
+                                     .hit_sd = SPREAD,
+                                     .lure_mean = LURE_MEAN,
+                                     .lure_sd = SPREAD,
+                                     .x_mean = {x_mean[0], x_mean[1], x_mean[2]},
+                                     .x_sd = {x_sd[0], x_sd[1], x_sd[2]},
+                                     .sure = {SURE, SURE, SURE}};
+}
+
+static double limited(double value, double most)
+{
+    return value > most ? most : value < -most ? -most : value;
+}
+
+static double square(double value)
+{
+    return value * value;
+}
+
+/* A reviewer's part of the prior. */
+static double person_prior(const struct fit *fit, const struct consensus_person *person, size_t j)
+{
+    const struct consensus_common *common = &fit->common;
+    double rate = exp(person->log_chance_per_d);
+    return -0.5 * square((person->hit_logit - common->hit_mean) / common->hit_sd) -
+           0.5 * square((person->lure_logit - common->lure_mean) / common->lure_sd) +
+           person->log_chance_per_d - rate / common->chance_per_d -
+           rate * fmax(fit->input->days_looked[j], 0.0);
+}
+
+static void block_prior(void *context, size_t b)
+{
+    struct fit *fit = context;
+    struct fit_people_sums *sums = &fit->people_sums[b];
+    memset(sums, 0, sizeof *sums);
+    for (size_t j = b * FIT_PEOPLE_A_BLOCK;
+         j < (b + 1) * FIT_PEOPLE_A_BLOCK && j < fit->input->people; j++)
+        sums->prior += person_prior(fit, &fit->people[j], j);
+}
+
+static void add_blocks(struct fit *fit)
+{
+    memset(&fit->people_sum, 0, sizeof fit->people_sum);
+    double *total = (double *)&fit->people_sum;
+    for (size_t b = 0; b < fit->people_block_count; b++) {
+        const double *one = (const double *)&fit->people_sums[b];
+        for (size_t i = 0; i < sizeof fit->people_sum / sizeof *total; i++)
+            total[i] += one[i];
+    }
+}
+
+double fit_prior(struct fit *fit)
+{
+    const struct consensus_common *common = &fit->common;
+    base_pool_for(fit->settings->pool, fit->people_block_count, block_prior, fit);
+    add_blocks(fit);
+    double n = (double)fit->input->people, days = fmax(fit->input->days_total, 1.0);
+    return fit->people_sum.prior - n * log(common->hit_sd * common->lure_sd) -
+           0.5 * square((common->beta - BETA) / BETA_SD) -
+           0.5 * square((common->gamma - GAMMA) / GAMMA_SD) -
+           0.5 * square((common->tau_dip - TAU) / TAU_SD) -
+           0.5 * square((common->tau_lure - TAU) / TAU_SD) -
+           (common->dips_per_d + common->lures_per_d) * days -
+           KAPPA_WEIGHT * (log(common->kappa) + 0.5 * square(KAPPA / common->kappa));
+}
+
+/* One reviewer's Newton step, and their part in the population's mean and spread. */
+static void person_step(struct fit *fit, size_t j, struct fit_people_sums *sums)
+{
+    const struct consensus_common *common = &fit->common;
+    struct consensus_person *next = &fit->people_next[j];
+    double slope[FIT_SIDES] = {0.0, 0.0}, curve[FIT_SIDES] = {0.0, 0.0}, chance = 0.0;
+    for (size_t k = fit->first_of_person[j]; k < fit->first_of_person[j + 1]; k++) {
+        const struct fit_pair *pair = &fit->pairs[fit->of_person[k]];
+        for (int side = 0; side < FIT_SIDES; side++) {
+            slope[side] += pair->slope[side];
+            curve[side] += pair->curve[side];
+        }
+        chance += pair->nothing;
+    }
+    const double mean[FIT_SIDES] = {common->hit_mean, common->lure_mean};
+    const double spread[FIT_SIDES] = {common->hit_sd, common->lure_sd};
+    for (int side = 0; side < FIT_SIDES; side++) {
+        double *logit = side == FIT_DIP ? &next->hit_logit : &next->lure_logit;
+        double at = side == FIT_DIP ? fit->people[j].hit_logit : fit->people[j].lure_logit;
+        double pull = 1.0 / square(spread[side]);
+        *logit = at + limited((slope[side] - (at - mean[side]) * pull) / (curve[side] + pull),
+                              STEP_MOST);
+        sums->deviation[side] += *logit - mean[side];
+        sums->square[side] += square(*logit - mean[side]);
+        sums->known[side] += curve[side] / (curve[side] + pull);
+    }
+    double days = fmax(fit->input->days_looked[j], 0.0);
+    double rate = (chance + 1.0) / (days + 1.0 / common->chance_per_d);
+    next->log_chance_per_d = log(rate);
+    sums->chance_mean += rate;
+}
+
+static void block_step(void *context, size_t b)
+{
+    struct fit *fit = context;
+    struct fit_people_sums *sums = &fit->people_sums[b];
+    memset(sums, 0, sizeof *sums);
+    for (size_t j = b * FIT_PEOPLE_A_BLOCK;
+         j < (b + 1) * FIT_PEOPLE_A_BLOCK && j < fit->input->people; j++)
+        person_step(fit, j, sums);
+}
+
+/* Mean and spread of a logit over the reviewers: where the estimates' spread and their own variance
+ * together leave them unchanged (Laplace EM), reached in longer steps than EM's own: those who
+ * were hardly seen do not hold it back. */
+static void population_step(const struct fit_people_sums *sums, int side, double expected,
+                            double *mean, double *spread)
+{
+    double variance = square(*spread);
+    double step = (sums->deviation[side] / variance + (expected - *mean) / square(MEAN_SD)) /
+                  (sums->known[side] / variance + 1.0 / square(MEAN_SD));
+    *spread = sqrt((sums->square[side] + SPREAD_WEIGHT * square(SPREAD)) /
+                   (sums->known[side] + SPREAD_WEIGHT));
+    *mean += limited(step, STEP_MOST);
+}
+
+static void densities_step(const struct fit_sums *sums, struct consensus_common *next)
+{
+    for (int c = 0; c < FIT_CLASSES; c++) {
+        double n = sums->count[c] + X_WEIGHT;
+        double mean = (sums->x[c] + X_WEIGHT * x_mean[c]) / n;
+        double second = (sums->xx[c] + X_WEIGHT * (square(x_sd[c]) + square(x_mean[c]))) / n;
+        next->x_mean[c] = mean;
+        next->x_sd[c] = sqrt(fmax(second - square(mean), square(X_SD_LEAST)));
+        next->sure[c] = (sums->sure[c] + SURE_WEIGHT * SURE) / (sums->marks[c] + SURE_WEIGHT);
+    }
+}
+
+static void population_all_step(const struct fit *fit, struct consensus_common *next)
+{
+    const struct fit_people_sums *people = &fit->people_sum;
+    double days = fmax(fit->input->days_total, 1.0), n = (double)fit->input->people;
+    population_step(people, FIT_DIP, HIT_MEAN, &next->hit_mean, &next->hit_sd);
+    population_step(people, FIT_LURE, LURE_MEAN, &next->lure_mean, &next->lure_sd);
+    next->dips_per_d = (fit->sums.all[FIT_DIP] + RATE_WEIGHT) / days;
+    next->lures_per_d = (fit->sums.all[FIT_LURE] + RATE_WEIGHT) / days;
+    next->chance_per_d = (people->chance_mean + next->chance_per_d) / (n + 1.0);
+    densities_step(&fit->sums, next);
+}
+
+void fit_step(struct fit *fit, bool population)
+{
+    base_pool_for(fit->settings->pool, fit->people_block_count, block_step, fit);
+    add_blocks(fit);
+    const struct fit_sums *sums = &fit->sums;
+    const struct consensus_common *now = &fit->common;
+    struct consensus_common *next = &fit->common_next;
+    *next = *now;
+    next->beta += limited((sums->slope[FIT_DIP] - (now->beta - BETA) / square(BETA_SD)) /
+                              (sums->slope_curve[FIT_DIP] + 1.0 / square(BETA_SD)),
+                          STEP_MOST);
+    next->gamma += limited((sums->slope[FIT_LURE] - (now->gamma - GAMMA) / square(GAMMA_SD)) /
+                               (sums->slope_curve[FIT_LURE] + 1.0 / square(GAMMA_SD)),
+                           STEP_MOST);
+    double *tau[FIT_SIDES] = {&next->tau_dip, &next->tau_lure};
+    for (int side = 0; side < FIT_SIDES; side++) {
+        double pull = 1.0 / square(TAU_SD);
+        *tau[side] += limited(
+            (sums->tau[side] - (*tau[side] - TAU) * pull) / (sums->tau_curve[side] + pull), 0.5);
+        *tau[side] = fmin(fmax(*tau[side], FIT_TAU_LEAST), FIT_TAU_MOST);
+    }
+    next->kappa =
+        sqrt((sums->spread + KAPPA_WEIGHT * square(KAPPA)) / (sums->centres + KAPPA_WEIGHT));
+    if (population)
+        population_all_step(fit, next);
+}

@@ -1,0 +1,278 @@
+#include <math.h>
+#include <string.h>
+
+#include "fit.h"
+
+#define LOGIT_MOST 30.0 /* beyond it a logit changes nothing */
+#define PAIRS_A_LOG 16  /* so many factors of at most 1 + e^(30 + 3 x 3.75) stay below 1e308 */
+#define SEEN_LEAST 0.05 /* a group stands for at most twenty like it */
+
+/* Nodes and weights of the integral over a normal density, as published in every table. */
+const union fit_nodes fit_node_u = {.at = {-3.7504397177257425, -2.366759410734541,
+                                           -1.1544053947399682, 0.0, 1.1544053947399682,
+                                           2.366759410734541, 3.7504397177257425, 0.0}};
+const union fit_nodes fit_node_weight = {
+    .at = {0.000548268855972217, 0.03075712396758652, 0.2401231786050127, 0.45714285714285724,
+           0.2401231786050127, 0.03075712396758652, 0.000548268855972217, 0.0}};
+
+/* The looks at one group in one class, at each node. */
+struct side {
+    union fit_nodes share;  /* of each node, given the looks; they add up to 1 */
+    union fit_nodes unseen; /* given that nobody marked */
+};
+
+static fit_pack both(double value)
+{
+    return (fit_pack){value, value};
+}
+
+static void take_logs(union fit_nodes *product, double *logs)
+{
+    for (int m = 0; m < FIT_NODES; m++) {
+        logs[m] += log(product->at[m]);
+        product->at[m] = 1.0;
+    }
+}
+
+/* log of the weighted sum of e^logs; the shares of the nodes in it. */
+static double weigh_nodes(const double *logs, union fit_nodes *share)
+{
+    double most = -INFINITY, sum = 0.0;
+    for (int m = 0; m + 1 < FIT_NODES; m++)
+        most = fmax(most, logs[m]);
+    for (int m = 0; m < FIT_NODES; m++) {
+        share->at[m] = m + 1 < FIT_NODES ? fit_node_weight.at[m] * exp(logs[m] - most) : 0.0;
+        sum += share->at[m];
+    }
+    for (int m = 0; m < FIT_NODES; m++)
+        share->at[m] /= sum;
+    return most + log(sum);
+}
+
+/* Integrate the looks at group g over u. With t = e^-logit, P(marked) at a node is 1 / (1 + t E)
+ * and P(not marked) t E / (1 + t E), where E = e^(-tau u) is the same for all groups of a round:
+ * one exponential a look. */
+static void side_sum(const struct fit *fit, size_t g, int side, struct side *out)
+{
+    const struct consensus_item *item = &fit->input->items[g];
+    const struct consensus_look *looks = fit->input->looks + item->first_look;
+    struct fit_pair *pairs = fit->pairs + item->first_look;
+    struct fit_group *group = &fit->groups[g];
+    double grown = fit_growth(&fit->common, side) * fit_x(fit, group, side);
+    double shared[FIT_NODES] = {0.0}, marked = 0.0, unmarked = 0.0;
+    union fit_nodes product;
+    for (int i = 0; i < FIT_PACKS; i++)
+        product.pack[i] = both(1.0);
+    for (size_t k = 0; k < item->looks; k++) {
+        const struct consensus_person *person = &fit->people[looks[k].person];
+        double logit = (side == FIT_DIP ? person->hit_logit : person->lure_logit) + grown;
+        logit = logit > LOGIT_MOST ? LOGIT_MOST : logit < -LOGIT_MOST ? -LOGIT_MOST : logit;
+        double t = exp(-logit);
+        pairs[k].slope[side] = t;
+        *(looks[k].marked ? &marked : &unmarked) += logit;
+        for (int i = 0; i < FIT_PACKS; i++)
+            product.pack[i] *= both(1.0) + both(t) * fit->scale[side].pack[i];
+        if (k % PAIRS_A_LOG == PAIRS_A_LOG - 1)
+            take_logs(&product, shared);
+    }
+    take_logs(&product, shared);
+    double tau = side == FIT_DIP ? fit->common.tau_dip : fit->common.tau_lure;
+    double seen[FIT_NODES], unseen[FIT_NODES], n = (double)item->looks;
+    for (int m = 0; m < FIT_NODES; m++) {
+        double lift = tau * fit_node_u.at[m];
+        seen[m] = -shared[m] - unmarked - (n - group->marks) * lift;
+        unseen[m] = -shared[m] - unmarked - marked - n * lift;
+    }
+    group->log_side[side] = weigh_nodes(seen, &out->share);
+    group->unseen[side] = exp(fmin(weigh_nodes(unseen, &out->unseen), 0.0));
+}
+
+static bool allows(const struct consensus_item *item, int class)
+{
+    return class == FIT_DIP ? item->known != CONSENSUS_NOT_DIP : item->known != CONSENSUS_DIP;
+}
+
+/* Joint log-likelihoods of the classes. */
+static void weigh_classes(const struct fit *fit, size_t g)
+{
+    const struct consensus_item *item = &fit->input->items[g];
+    const struct consensus_look *looks = fit->input->looks + item->first_look;
+    const struct consensus_common *common = &fit->common;
+    struct fit_group *group = &fit->groups[g];
+    double time = fit_log_time(fit, group);
+    group->log_class[FIT_DIP] = log(common->dips_per_d) + group->log_side[FIT_DIP] + time;
+    group->log_class[FIT_LURE] = log(common->lures_per_d) + group->log_side[FIT_LURE] + time;
+    group->log_class[FIT_NOTHING] = 0.0;
+    for (size_t k = 0; k < item->looks; k++)
+        if (looks[k].marked)
+            group->log_class[FIT_NOTHING] += fit->people[looks[k].person].log_chance_per_d;
+    for (int c = 0; c < FIT_CLASSES; c++)
+        group->log_class[c] += group->sure * log(common->sure[c]) +
+                               (group->marks - group->sure) * log1p(-common->sure[c]) +
+                               fit_log_density(fit, group, c);
+    if (group->complete) /* its SNR and its place were chosen, not met with */
+        group->log_class[FIT_DIP] -= log(common->dips_per_d) + fit_log_density(fit, group, FIT_DIP);
+    for (int side = 0; side < FIT_SIDES && !group->complete; side++)
+        group->log_class[side] -= log(fmax(1.0 - group->unseen[side], SEEN_LEAST));
+}
+
+/* Posteriors; the group's part of the objective. */
+static double classify(const struct fit *fit, size_t g)
+{
+    const struct consensus_item *item = &fit->input->items[g];
+    struct fit_group *group = &fit->groups[g];
+    double most = -INFINITY, sum = 0.0;
+    for (int c = 0; c < FIT_CLASSES; c++)
+        if (allows(item, c))
+            most = fmax(most, group->log_class[c]);
+    for (int c = 0; c < FIT_CLASSES; c++) {
+        group->probability[c] = allows(item, c) ? exp(group->log_class[c] - most) : 0.0;
+        sum += group->probability[c];
+    }
+    for (int c = 0; c < FIT_CLASSES; c++)
+        group->probability[c] /= sum;
+    return most + log(sum);
+}
+
+/* Derivatives by each look's logit, by the growth and by tau. Real looks count with the group's
+ * probability, and the groups like it that nobody marked with `like`: rows of zeros. */
+static void side_derive(const struct fit *fit, size_t g, int side, const struct side *nodes,
+                        double like, struct fit_sums *sums)
+{
+    const struct consensus_item *item = &fit->input->items[g];
+    const struct consensus_look *looks = fit->input->looks + item->first_look;
+    struct fit_pair *pairs = fit->pairs + item->first_look;
+    const struct fit_group *group = &fit->groups[g];
+    double p = group->probability[side], slope = 0.0, curve = 0.0;
+    union fit_nodes real, weight, marked, bent;
+    for (int i = 0; i < FIT_PACKS; i++) {
+        real.pack[i] = both(p) * nodes->share.pack[i];
+        weight.pack[i] = real.pack[i] + both(like) * nodes->unseen.pack[i];
+        marked.pack[i] = bent.pack[i] = both(0.0);
+    }
+    for (size_t k = 0; k < item->looks; k++) {
+        fit_pack once = both(0.0), twice = both(0.0), t = both(pairs[k].slope[side]);
+        double y = looks[k].marked;
+        for (int i = 0; i < FIT_PACKS; i++) {
+            fit_pack rate = both(1.0) / (both(1.0) + t * fit->scale[side].pack[i]);
+            fit_pack weighed = weight.pack[i] * rate;
+            once += weighed;
+            twice += weighed * rate;
+            marked.pack[i] += rate;
+            bent.pack[i] += rate - rate * rate;
+        }
+        double expected = once[0] + once[1], variance = expected - (twice[0] + twice[1]);
+        pairs[k].slope[side] = p * y - expected;
+        pairs[k].curve[side] = fmax(variance, 0.0);
+        slope += pairs[k].slope[side];
+        curve += pairs[k].curve[side];
+    }
+    double x = fit_x(fit, group, side);
+    sums->slope[side] += x * slope;
+    sums->slope_curve[side] += x * x * curve;
+    for (int m = 0; m < FIT_NODES; m++) {
+        double u = fit_node_u.at[m];
+        sums->tau[side] += u * (real.at[m] * group->marks - weight.at[m] * marked.at[m]);
+        sums->tau_curve[side] += u * u * weight.at[m] * bent.at[m];
+    }
+}
+
+/* The same for intervals. What it is not known whether the group is of this class, nor how hard it
+ * is, takes the variance of the slope off the curvature (Louis 1982, J. R. Stat. Soc. B 44, 226).
+ */
+static void side_observe(const struct fit *fit, size_t g, int side, const struct side *nodes)
+{
+    const struct consensus_item *item = &fit->input->items[g];
+    const struct consensus_look *looks = fit->input->looks + item->first_look;
+    struct fit_pair *pairs = fit->pairs + item->first_look;
+    double p = fit->groups[g].probability[side];
+    for (size_t k = 0; k < item->looks; k++) {
+        double mean = 0.0, squares = 0.0, curve = 0.0;
+        for (int m = 0; m < FIT_NODES; m++) {
+            double rate = 1.0 / (1.0 + pairs[k].slope[side] * fit->scale[side].at[m]);
+            double off = looks[k].marked - rate, share = nodes->share.at[m];
+            mean += share * off;
+            squares += share * off * off;
+            curve += share * rate * (1.0 - rate);
+        }
+        pairs[k].slope[side] = mean;
+        pairs[k].curve[side] = p * curve - (p * squares - p * p * mean * mean);
+    }
+}
+
+static void sum_common(const struct fit *fit, size_t g, struct fit_sums *sums)
+{
+    const struct consensus_item *item = &fit->input->items[g];
+    const struct fit_group *group = &fit->groups[g];
+    const double *p = group->probability;
+    if (group->marks > 1.0) {
+        sums->spread += (p[FIT_DIP] + p[FIT_LURE]) * group->spread;
+        sums->centres += (p[FIT_DIP] + p[FIT_LURE]) * (group->marks - 1.0);
+    }
+    for (int c = 0; c < FIT_CLASSES; c++) {
+        sums->sure[c] += p[c] * group->sure;
+        sums->marks[c] += p[c] * group->marks;
+        if (item->control)
+            continue;
+        sums->all[c] += p[c];
+        if (c != FIT_NOTHING)
+            sums->shown[c] += p[c] / fmax(1.0 - group->unseen[c], SEEN_LEAST);
+        if (group->x == group->x) {
+            sums->count[c] += p[c];
+            sums->x[c] += p[c] * group->x;
+            sums->xx[c] += p[c] * group->x * group->x;
+        }
+    }
+    sums->survey += item->control ? 0.0 : 1.0;
+}
+
+static void group_sum(struct fit *fit, size_t g, struct fit_sums *sums)
+{
+    const struct consensus_item *item = &fit->input->items[g];
+    struct fit_group *group = &fit->groups[g];
+    struct fit_pair *pairs = fit->pairs + item->first_look;
+    struct side nodes[FIT_SIDES];
+    for (int side = 0; side < FIT_SIDES; side++)
+        side_sum(fit, g, side, &nodes[side]);
+    weigh_classes(fit, g);
+    sums->objective += classify(fit, g);
+    for (size_t k = 0; k < item->looks; k++)
+        pairs[k].nothing =
+            fit->input->looks[item->first_look + k].marked ? group->probability[FIT_NOTHING] : 0.0;
+    for (int side = 0; side < FIT_SIDES; side++) {
+        double unseen = group->unseen[side];
+        double like = group->complete || unseen > 1.0 - SEEN_LEAST
+                          ? 0.0
+                          : group->probability[side] * unseen / (1.0 - unseen);
+        if (fit->observed)
+            side_observe(fit, g, side, &nodes[side]);
+        else
+            side_derive(fit, g, side, &nodes[side], like, sums);
+    }
+    sum_common(fit, g, sums);
+}
+
+static void block_sum(void *context, size_t b)
+{
+    struct fit *fit = context;
+    struct fit_sums *sums = &fit->block_sums[b];
+    memset(sums, 0, sizeof *sums);
+    for (size_t i = 0; i < fit->blocks[b].count; i++)
+        group_sum(fit, fit->blocks[b].first + i, sums);
+}
+
+void fit_sums(struct fit *fit)
+{
+    for (int m = 0; m < FIT_NODES; m++) {
+        fit->scale[FIT_DIP].at[m] = exp(-fit->common.tau_dip * fit_node_u.at[m]);
+        fit->scale[FIT_LURE].at[m] = exp(-fit->common.tau_lure * fit_node_u.at[m]);
+    }
+    base_pool_for(fit->settings->pool, fit->block_count, block_sum, fit);
+    memset(&fit->sums, 0, sizeof fit->sums);
+    double *total = (double *)&fit->sums;
+    for (size_t b = 0; b < fit->block_count; b++) {
+        const double *one = (const double *)&fit->block_sums[b];
+        for (size_t i = 0; i < sizeof fit->sums / sizeof *total; i++)
+            total[i] += one[i];
+    }
+}
