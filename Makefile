@@ -129,6 +129,12 @@ $(OUT)/fuzz/query $(OUT)/fuzz/cookie: $(OUT)/fuzz/%: tests/fuzz/%.c $(http_parse
 	clang $(CPPFLAGS) -std=c17 -g -O1 -pthread -fsanitize=fuzzer,address,undefined \
 		-fno-sanitize-recover=undefined $^ $(LIBS_base) -o $@
 
+# The reader of reviews made elsewhere stands on base alone.
+$(OUT)/fuzz/records: tests/fuzz/records.c $(addprefix server/campaign/,records.c vector.c) $(call sources,base)
+	@mkdir -p $(@D)
+	clang $(CPPFLAGS) -std=c17 -g -O1 -pthread -fsanitize=fuzzer,address,undefined \
+		-fno-sanitize-recover=undefined $^ $(LIBS_base) -o $@
+
 # ---- what is needed from Debian ----
 build_packages := gcc libc6-dev gzip libmicrohttpd-dev libsqlite3-dev libjansson-dev libcfitsio-dev \
 	libsodium-dev libgsl-dev libarchive-dev libcurl4-openssl-dev libunistring-dev zlib1g-dev

@@ -9,17 +9,22 @@ static bool bad_line(const struct records *records, struct base_error *error, co
     return base_fail(error, BASE_INVALID, "Line %" PRIu64 ": %s.", records->line, why);
 }
 
-bool records_open(struct records *records, const char *path, struct base_error *error)
+void records_start(struct records *records, FILE *file)
 {
-    *records = (struct records){.next_line = 1, .starts = VECTOR_OF(size_t)};
-    records->file = fopen(path, "rbe");
-    if (records->file == NULL)
-        return base_fail_errno(error, errno, "Opening %s", path);
     static const unsigned char mark[] = {0xef, 0xbb, 0xbf};
     unsigned char head[sizeof mark];
-    if (fread(head, 1, sizeof head, records->file) != sizeof head ||
-        memcmp(head, mark, sizeof mark) != 0)
-        rewind(records->file);
+    *records = (struct records){.file = file, .next_line = 1, .starts = VECTOR_OF(size_t)};
+    if (fread(head, 1, sizeof head, file) != sizeof head || memcmp(head, mark, sizeof mark) != 0)
+        rewind(file);
+}
+
+bool records_open(struct records *records, const char *path, struct base_error *error)
+{
+    *records = (struct records){0};
+    FILE *file = fopen(path, "rbe");
+    if (file == NULL)
+        return base_fail_errno(error, errno, "Opening %s", path);
+    records_start(records, file);
     return true;
 }
 

@@ -22,6 +22,8 @@ struct records {
 
 /* BASE_NOT_FOUND, BASE_IO. The caller closes it. */
 bool records_open(struct records *records, const char *path, struct base_error *error);
+/* Read from an open file, which records_close closes. */
+void records_start(struct records *records, FILE *file);
 void records_close(struct records *records);
 
 /* The next record; *more is false at the end. Empty lines are passed over. BASE_INVALID with the
