@@ -75,7 +75,11 @@ static bool fill_candidate(sqlite3_stmt *row, struct base_arena *arena, void *it
 #define LEAST "c.probability >= ?2 "
 /* + keeps the planner from taking the index of probabilities where another is in order already. */
 #define LEAST_ASIDE "+c.probability >= ?2 "
-#define ALSO "AND (?3 = 0 OR c.batch = ?3) AND (?4 = '' OR iif(?4 = 'none', '', ?4) = " LATEST ") "
+/* The first part of each verdict's test is quick and settles most candidates. */
+#define ALSO                                                                                       \
+    "AND (?3 = 0 OR c.batch = ?3) AND (?4 = ''"                                                    \
+    " OR (?4 = 'none' AND c.id NOT IN (SELECT candidate FROM verdict))"                            \
+    " OR (c.id IN (SELECT candidate FROM verdict WHERE verdict = ?4) AND " LATEST "= ?4)) "
 #define OF_STAR "AND c.star = ?5 "
 
 /* Over all stars, or those of one. */
