@@ -90,7 +90,7 @@ static enum http_result show(struct http_exchange *exchange, void *context)
 static enum http_result withdraw(struct http_exchange *exchange, void *context)
 {
     struct api_call call;
-    struct store_batch batch;
+    struct store_batch batch = {0};
     bool ok = api_call_begin(&call, exchange, context) && api_call_no_body(&call) &&
               find(&call, &batch) &&
               campaign_batch_withdraw(call.campaign, batch.id, &call.error) && find(&call, &batch);

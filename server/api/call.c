@@ -27,8 +27,7 @@ enum http_result api_call_end(struct api_call *call)
     return call->answered ? HTTP_ANSWERED : http_answer_error(call->exchange, &call->error);
 }
 
-/* A positive whole number and nothing else. */
-static bool read_positive(const char *text, int64_t *out)
+bool api_number_read(const char *text, int64_t *out)
 {
     if (text[0] < '1' || text[0] > '9' || text[strspn(text, "0123456789")] != '\0')
         return false;
@@ -40,7 +39,7 @@ static bool read_positive(const char *text, int64_t *out)
 
 bool api_call_number(struct api_call *call, const char *part, const char *missing, int64_t *out)
 {
-    return read_positive(http_path_part(call->exchange, part), out) ||
+    return api_number_read(http_path_part(call->exchange, part), out) ||
            base_fail(&call->error, BASE_NOT_FOUND, "%s", missing);
 }
 
@@ -59,7 +58,7 @@ bool api_call_page(struct api_call *call, struct api_page *out)
     if (!api_call_limit(call, &out->limit))
         return false;
     const char *cursor = http_query(call->exchange, "cursor");
-    return cursor == NULL || read_positive(cursor, &out->after) ||
+    return cursor == NULL || api_number_read(cursor, &out->after) ||
            base_fail_field(&call->error, BASE_INVALID, "cursor",
                            "This cursor is not one that this list gave.");
 }

@@ -47,6 +47,8 @@ enum http_result api_call_end(struct api_call *call);
 
 /* ---- the address ---- */
 
+/* A positive whole number and nothing else. */
+bool api_number_read(const char *text, int64_t *out);
 /* A positive whole number in the path; anything else names nothing: BASE_NOT_FOUND with the
  * sentence. */
 bool api_call_number(struct api_call *call, const char *part, const char *missing, int64_t *out);

@@ -88,20 +88,32 @@ static bool digest_of(const struct store_candidate_query *query, char out[2 * DI
     return ok;
 }
 
+/* Take a cursor apart: "<run>.<rows passed over>.<digest>". */
+static bool cut_cursor(const char *cursor, const char *digest, int64_t *run, int64_t *offset)
+{
+    char text[96];
+    char *rest = NULL;
+    if (strlen(cursor) >= sizeof text)
+        return false;
+    memcpy(text, cursor, strlen(cursor) + 1);
+    const char *first = strtok_r(text, ".", &rest);
+    const char *second = strtok_r(NULL, ".", &rest);
+    return first != NULL && second != NULL && api_number_read(first, run) &&
+           api_number_read(second, offset) && strcmp(rest, digest) == 0;
+}
+
 static bool read_cursor(struct api_call *call, struct candidates_question *question)
 {
     const char *cursor = http_query(call->exchange, "cursor");
     if (cursor == NULL)
         return true;
-    char digest[2 * DIGEST_SIZE + 1], given[2 * DIGEST_SIZE + 1] = "", end;
-    int64_t run = 0, offset = 0;
-    int read = sscanf(cursor, "%" SCNd64 ".%" SCNd64 ".%16[0-9a-f]%c", &run, &offset, given, &end);
+    char digest[2 * DIGEST_SIZE + 1];
+    int64_t run;
     if (!digest_of(&question->query, digest))
         return base_fail(&call->error, BASE_MEMORY, "There is no memory to read a cursor.");
-    if (read != 3 || run < 1 || offset < 1 || strcmp(given, digest) != 0)
+    if (!cut_cursor(cursor, digest, &run, &question->query.offset))
         return base_fail_field(&call->error, BASE_INVALID, "cursor",
                                "This cursor is not one that this list gave for this question.");
-    question->query.offset = offset;
     return question->run.id == run ||
            store_run_read(call->store, call->arena, run, &question->run, &call->error);
 }

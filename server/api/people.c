@@ -94,12 +94,14 @@ static enum http_result change(struct http_exchange *exchange, void *context)
               api_call_number(&call, "id", "There is no such person.", &id) &&
               read_change(&call, &change) && is_somebody_else(&call, id) &&
               store_person_by_id(call.store, call.arena, id, &person, &call.error);
-    if (ok && change.has_role)
+    if (!ok)
+        return api_call_end(&call);
+    if (change.has_role)
         ok = store_person_set_role(call.store, id, (enum store_role)(change.role + 1), &call.error);
     if (ok && change.has_suspended)
         ok = store_person_set_suspended(call.store, id, change.suspended, &call.error);
-    ok = ok && store_person_by_id(call.store, call.arena, id, &person, &call.error);
     http_identity_forget(http_server_of(exchange), id);
+    ok = ok && store_person_by_id(call.store, call.arena, id, &person, &call.error);
     return ok ? http_answer_json(exchange, 200, person_for_admin(&person)) : api_call_end(&call);
 }
 

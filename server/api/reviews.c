@@ -17,7 +17,7 @@
 #define SECONDS_MOST 86400.0
 
 /* A review on its way; from the exchange's arena, so that it lives until the answer is sent. */
-struct sending {
+struct taking {
     struct http_exchange *exchange;
     struct store_review_new review;
     struct store_mark marks[MARKS_MOST];
@@ -67,7 +67,7 @@ static void read_mark(struct api_call *call, json_t *json, size_t index, struct 
     out->sure = certainty == 0;
 }
 
-static void read_marks(const struct api_input *input, struct sending *sending)
+static void read_marks(const struct api_input *input, struct taking *taking)
 {
     json_t *marks = NULL;
     if (!api_input_array(input, "marks", true, &marks))
@@ -79,12 +79,12 @@ static void read_marks(const struct api_input *input, struct sending *sending)
         return;
     }
     for (size_t i = 0; i < count; i++)
-        read_mark(input->call, json_array_get(marks, i), i, &sending->marks[i]);
-    sending->review.marks = sending->marks;
-    sending->review.mark_count = count;
+        read_mark(input->call, json_array_get(marks, i), i, &taking->marks[i]);
+    taking->review.marks = taking->marks;
+    taking->review.mark_count = count;
 }
 
-static void read_conditions(const struct api_input *input, struct sending *sending)
+static void read_conditions(const struct api_input *input, struct taking *taking)
 {
     json_t *conditions = NULL, *condition;
     size_t i;
@@ -96,36 +96,36 @@ static void read_conditions(const struct api_input *input, struct sending *sendi
         char name[40];
         (void)snprintf(name, sizeof name, "conditions[%zu]", i);
         if (word != NULL && strcmp(word, "break") == 0)
-            sending->review.conditions |= STORE_BREAK;
+            taking->review.conditions |= STORE_BREAK;
         else if (word != NULL && strcmp(word, "keeps_changing") == 0)
-            sending->review.conditions |= STORE_KEEPS_CHANGING;
+            taking->review.conditions |= STORE_KEEPS_CHANGING;
         else
             api_input_fault(input, name, "%s must be break or keeps_changing.", name);
     }
 }
 
-static bool read_review(struct api_call *call, struct sending *sending, const char **lease)
+static bool read_review(struct api_call *call, struct taking *taking, const char **lease)
 {
     static const char *const names[] = {"lease", "marks", "conditions", "seconds", NULL};
     struct api_input input = {call, NULL, ""};
     size_t size;
-    if (!read_key(call, &sending->review.key) || !api_call_body(call, false, &input.object))
+    if (!read_key(call, &taking->review.key) || !api_call_body(call, false, &input.object))
         return false;
     api_input_only(&input, names);
     (void)api_input_text(&input, "lease", true, CAMPAIGN_LEASE_SIZE - 1, lease);
-    (void)api_input_number(&input, "seconds", false, 0.0, SECONDS_MOST, &sending->review.seconds);
-    read_marks(&input, sending);
-    read_conditions(&input, sending);
+    (void)api_input_number(&input, "seconds", false, 0.0, SECONDS_MOST, &taking->review.seconds);
+    read_marks(&input, taking);
+    read_conditions(&input, taking);
     const void *body = http_body(call->exchange, &size);
-    (void)crypto_hash_sha256(sending->review.body_hash, body, size);
+    (void)crypto_hash_sha256(taking->review.body_hash, body, size);
     return api_input_end(call);
 }
 
 /* ---- checking ------------------------------------------------------------------------------- */
 
-static bool check(struct api_call *call, struct sending *sending, const char *text)
+static bool check(struct api_call *call, struct taking *taking, const char *text)
 {
-    struct store_review_new *review = &sending->review;
+    struct store_review_new *review = &taking->review;
     struct campaign_lease_read lease;
     struct store_segment segment;
     if (!campaign_lease_open(call->campaign, text, &lease, &call->error))
@@ -142,7 +142,7 @@ static bool check(struct api_call *call, struct sending *sending, const char *te
     review->submitted_ms = base_clock_unix_ms();
     memcpy(review->lease, lease.nonce, sizeof review->lease);
     return store_segment_by_id(call->store, call->arena, lease.segment, &segment, &call->error) &&
-           campaign_review_check(call->campaign, &segment, sending->marks, review->mark_count,
+           campaign_review_check(call->campaign, &segment, taking->marks, review->mark_count,
                                  &call->error);
 }
 
@@ -178,34 +178,33 @@ static enum http_result answer(struct http_exchange *exchange,
  * exchange, because the server may be gone by now. */
 static void stored(void *context, bool ok, const struct base_error *error)
 {
-    struct sending *sending = context;
-    struct http_exchange *exchange = sending->exchange;
+    struct taking *taking = context;
+    struct http_exchange *exchange = taking->exchange;
     if (ok)
-        (void)answer(exchange, &sending->review);
+        (void)answer(exchange, &taking->review);
     else
         (void)http_answer_error(exchange, error);
     http_resume(exchange);
 }
 
 /* POST /reviews */
-static enum http_result send(struct http_exchange *exchange, void *context)
+static enum http_result take(struct http_exchange *exchange, void *context)
 {
     struct api_call call;
     const char *lease = NULL;
     if (!api_call_begin(&call, exchange, context))
         return api_call_end(&call);
-    struct sending *sending = base_arena_take(call.arena, sizeof *sending);
-    bool ok = sending != NULL
-                  ? read_review(&call, sending, &lease) && check(&call, sending, lease)
-                  : base_fail(&call.error, BASE_MEMORY, "There is no memory to take a review.");
-    if (!ok)
+    struct taking *taking = base_arena_take(call.arena, sizeof *taking);
+    if (taking == NULL) {
+        (void)base_fail(&call.error, BASE_MEMORY, "There is no memory to take a review.");
         return api_call_end(&call);
-    sending->exchange = exchange;
-    return campaign_review_submit(call.campaign, &sending->review, stored, sending, &call.error)
-               ? HTTP_LATER
-               : api_call_end(&call);
+    }
+    taking->exchange = exchange;
+    bool ok = read_review(&call, taking, &lease) && check(&call, taking, lease) &&
+              campaign_review_submit(call.campaign, &taking->review, stored, taking, &call.error);
+    return ok ? HTTP_LATER : api_call_end(&call);
 }
 
 const struct http_route api_reviews_routes[] = {
-    {"POST", "/api/v1/reviews", HTTP_REVIEWER, 0, BODY_MOST, send},
+    {"POST", "/api/v1/reviews", HTTP_REVIEWER, 0, BODY_MOST, take},
     {NULL, NULL, HTTP_ANYONE, 0, 0, NULL}};
