@@ -3,7 +3,6 @@
  * from stdin, one command a line:
  *   data N               followed by N lines "time flux"; becomes the light curve at hand
  *   trend WINDOW GAP     -> N values on one line
- *   time_trend WINDOW GAP -> seconds that took
  *   flatten WINDOW GAP   divides the light curve by its trend
  *   noise CADENCE GAP    -> point noise and the windows' scatter; becomes the noise at hand
  *   noise_of_mean DURATION POINTS -> one value
@@ -17,7 +16,6 @@
 #include <stdio.h>
 #include <stdlib.h>
 
-#include "ebbmark/clock.h"
 #include "ebbmark/injection.h"
 #include "ebbmark/lightcurve_inject.h"
 #include "ebbmark/lightcurve_measure.h"
@@ -67,13 +65,6 @@ static void find_trend(struct desk *desk, double window, double gap)
     struct base_error error;
     must(lightcurve_trend(desk->time, desk->flux, desk->n, window, gap, desk->trend, &error),
          &error);
-}
-
-static void time_trend(struct desk *desk, double window, double gap)
-{
-    double begun = base_clock_monotonic_s();
-    find_trend(desk, window, gap);
-    printf("%.6f\n", base_clock_monotonic_s() - begun);
 }
 
 static void set_white(struct desk *desk, double point, double cadence)
@@ -162,8 +153,6 @@ static void obey(struct desk *desk, const char *line)
     } else if (sscanf(line, "trend %lf %lf", &a, &b) == 2) {
         find_trend(desk, a, b);
         print_values(desk->trend, desk->n);
-    } else if (sscanf(line, "time_trend %lf %lf", &a, &b) == 2) {
-        time_trend(desk, a, b);
     } else if (sscanf(line, "flatten %lf %lf", &a, &b) == 2) {
         find_trend(desk, a, b);
         for (size_t i = 0; i < desk->n; i++)
