@@ -16,7 +16,7 @@
 
 enum campaign_table { CAMPAIGN_CANDIDATES, CAMPAIGN_REVIEWERS, CAMPAIGN_REVIEWS };
 
-/* The table by itself, or by its name ("candidates"; NULL when there is none such). */
+/* A table, and which one a name ("candidates") stands for: false when there is none such. */
 const struct export_table *campaign_table(enum campaign_table which);
 bool campaign_table_read(const char *name, enum campaign_table *out);
 

@@ -17,12 +17,11 @@
 #define KEY_BYTES_MAX 200
 
 /* X(column): what a file must have. */
-#define COLUMNS(X)                                                                                 \
-    X(review)                                                                                      \
-    X(reviewer)                                                                                    \
-    X(star)                                                                                        \
-    X(segment_starts) X(segment_ends) X(submitted) X(mark_starts) X(mark_ends) X(mark_low)         \
-        X(mark_high) X(certainty)
+/* clang-format off */
+#define COLUMNS(X) \
+    X(review) X(reviewer) X(star) X(segment_starts) X(segment_ends) X(submitted) \
+    X(mark_starts) X(mark_ends) X(mark_low) X(mark_high) X(certainty)
+/* clang-format on */
 
 enum column {
 #define X(name) AT_##name,
