@@ -51,6 +51,7 @@ struct consensus_common {
     double dips_per_d;         /* rho: of survey light curve, marked or not */
     double lures_per_d;        /* the same for lures */
     double chance_per_d;       /* a typical reviewer's chance marks */
+    double together_per_d;     /* places where nothing is that people mark together */
     double hit_mean, hit_sd;   /* logits at SNR 10 over the reviewers */
     double lure_mean, lure_sd; /* the same for lures */
     double x_mean[3], x_sd[3]; /* density of x for dips, lures, nothing */
@@ -59,6 +60,7 @@ struct consensus_common {
 struct consensus_person {
     double hit_logit, lure_logit; /* at SNR 10 */
     double log_chance_per_d;      /* natural log */
+    double log_together;          /* weight among those who mark together; 0 for most */
 };
 
 /* Where a fit starts, from an earlier one. people values in the order of the new input; those with

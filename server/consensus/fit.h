@@ -32,7 +32,9 @@ struct fit_pair {
     double slope[FIT_SIDES]; /* d of the expected log-likelihood by the logit; while a group is
                                 summed, e^-logit stands here */
     double curve[FIT_SIDES]; /* minus the second derivative, >= 0 */
-    double nothing;          /* P(nothing) where marked */
+    double alone;            /* P(nothing, by chance) where marked */
+    double together;         /* P(nothing, marked together) where marked */
+    double invited;          /* marks made together, over the weight of all lookers */
 };
 
 /* One group, beside the caller's item. */
@@ -45,6 +47,10 @@ struct fit_group {
     bool complete;   /* an injected dip: it is here whether it was marked or not */
     double log_side[FIT_SIDES];      /* log of the integral over u of the looks */
     double unseen[FIT_SIDES];        /* P(no mark at all | class) */
+    double log_alone, log_together;  /* the two ways of being nothing, see fit_sums.c */
+    double together;                 /* P(together | nothing) */
+    double log_orders;               /* log of k! for k marks */
+    double company;                  /* sum of the lookers' weights in marking together */
     double log_class[FIT_CLASSES];   /* joint log-likelihoods; -INFINITY where ruled out */
     double probability[FIT_CLASSES]; /* posterior */
 };
@@ -59,6 +65,7 @@ struct fit_sums {
     double count[FIT_CLASSES], x[FIT_CLASSES], xx[FIT_CLASSES]; /* survey groups with an SNR */
     double all[FIT_CLASSES];                                    /* survey groups */
     double shown[FIT_SIDES]; /* the same, and those like them that nobody marked */
+    double together;         /* survey groups marked together */
     double survey;           /* number of survey groups */
 };
 
@@ -120,6 +127,12 @@ bool fit_answers(struct fit *fit, struct consensus_output *output, struct base_e
 static inline double fit_x(const struct fit *fit, const struct fit_group *group, int side)
 {
     return group->x == group->x ? group->x : fit->common.x_mean[side];
+}
+
+static inline double fit_log_sum(double a, double b)
+{
+    double most = fmax(a, b);
+    return most == -INFINITY ? most : most + log(exp(a - most) + exp(b - most));
 }
 
 /* log of the normal density of x in a class; 0 where nothing was measured. */

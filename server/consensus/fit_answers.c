@@ -13,12 +13,6 @@ static double logistic(double logit)
     return 1.0 / (1.0 + exp(-logit));
 }
 
-static double log_sum(double a, double b)
-{
-    double most = fmax(a, b);
-    return most == -INFINITY ? most : most + log(exp(a - most) + exp(b - most));
-}
-
 static double capped(double log_odds)
 {
     return log_odds > 700.0 ? 700.0 : log_odds < -700.0 ? -700.0 : log_odds;
@@ -58,7 +52,7 @@ static void share_variances(const struct fit *fit, struct share *shares)
             const struct fit_pair *pair = &fit->pairs[fit->of_person[k]];
             curve[FIT_DIP] += pair->curve[FIT_DIP];
             curve[FIT_LURE] += pair->curve[FIT_LURE];
-            shares[j].chance += pair->nothing;
+            shares[j].chance += pair->alone;
         }
         for (int side = 0; side < FIT_SIDES; side++)
             shares[j].variance[side] =
@@ -115,8 +109,8 @@ static void skill_answer(const struct fit *fit, size_t j, const struct share *sh
 static double log_odds_without(const struct fit_group *group, const double less[FIT_CLASSES])
 {
     return capped(group->log_class[FIT_DIP] - less[FIT_DIP] -
-                  log_sum(group->log_class[FIT_LURE] - less[FIT_LURE],
-                          group->log_class[FIT_NOTHING] - less[FIT_NOTHING]));
+                  fit_log_sum(group->log_class[FIT_LURE] - less[FIT_LURE],
+                              group->log_class[FIT_NOTHING] - less[FIT_NOTHING]));
 }
 
 /* Variance of the log odds, from what is not known of the reviewers. */
@@ -124,9 +118,10 @@ static double log_odds_variance(const struct fit *fit, size_t g, const struct sh
 {
     const struct consensus_item *item = &fit->input->items[g];
     const struct fit_group *group = &fit->groups[g];
-    double not_dip = log_sum(group->log_class[FIT_LURE], group->log_class[FIT_NOTHING]);
+    double not_dip = fit_log_sum(group->log_class[FIT_LURE], group->log_class[FIT_NOTHING]);
     double lure = exp(group->log_class[FIT_LURE] - not_dip);
-    double nothing = exp(group->log_class[FIT_NOTHING] - not_dip), sum = 0.0;
+    double alone = exp(group->log_class[FIT_NOTHING] - not_dip) * (1.0 - group->together);
+    double sum = 0.0;
     for (size_t k = 0; k < item->looks; k++) {
         const struct consensus_look *look = &fit->input->looks[item->first_look + k];
         const struct fit_pair *pair = &fit->pairs[item->first_look + k];
@@ -135,7 +130,7 @@ static double log_odds_variance(const struct fit *fit, size_t g, const struct sh
         sum += by_dip * by_dip * share->variance[FIT_DIP] +
                by_lure * by_lure * share->variance[FIT_LURE];
         if (look->marked)
-            sum += nothing * nothing / share->chance;
+            sum += alone * alone / share->chance;
     }
     return sum;
 }
@@ -152,9 +147,14 @@ static void group_answer(const struct fit *fit, size_t g, const struct share *sh
     answer->log_odds = log_odds_without(group, less);
     for (int c = 0; c < FIT_CLASSES; c++)
         less[c] += fit_log_density(fit, group, c);
+    /* Of what is nothing, only marks made together agree in time. */
+    double nothing = group->log_class[FIT_NOTHING] -
+                     fit_log_sum(group->log_alone, group->log_together) +
+                     fit_log_sum(group->log_alone, group->log_together - time);
     double marks_only = log_odds_without(group, less);
     less[FIT_DIP] += time;
     less[FIT_LURE] += time;
+    less[FIT_NOTHING] += group->log_class[FIT_NOTHING] - nothing;
     double without_time = log_odds_without(group, less);
     answer->term_snr = answer->log_odds - marks_only;
     answer->term_time = marks_only - without_time;

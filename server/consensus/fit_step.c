@@ -23,6 +23,7 @@
 #define X_WEIGHT 4.0
 #define X_SD_LEAST 0.15
 #define RATE_WEIGHT 0.5
+#define TOGETHER_WEIGHT 0.1
 #define STEP_MOST 1.5 /* of a logit, a round */
 static const double x_mean[FIT_CLASSES] = {0.0, -0.5, -1.9};
 static const double x_sd[FIT_CLASSES] = {0.7, 0.6, 0.3};
@@ -60,8 +61,8 @@ static double person_prior(const struct fit *fit, const struct consensus_person 
     double rate = exp(person->log_chance_per_d);
     return -0.5 * square((person->hit_logit - common->hit_mean) / common->hit_sd) -
            0.5 * square((person->lure_logit - common->lure_mean) / common->lure_sd) +
-           person->log_chance_per_d - rate / common->chance_per_d -
-           rate * fmax(fit->input->days_looked[j], 0.0);
+           person->log_together - exp(person->log_together) + person->log_chance_per_d -
+           rate / common->chance_per_d - rate * fmax(fit->input->days_looked[j], 0.0);
 }
 
 static void block_prior(void *context, size_t b)
@@ -96,7 +97,7 @@ double fit_prior(struct fit *fit)
            0.5 * square((common->gamma - GAMMA) / GAMMA_SD) -
            0.5 * square((common->tau_dip - TAU) / TAU_SD) -
            0.5 * square((common->tau_lure - TAU) / TAU_SD) -
-           (common->dips_per_d + common->lures_per_d) * days -
+           (common->dips_per_d + common->lures_per_d + common->together_per_d) * days -
            KAPPA_WEIGHT * (log(common->kappa) + 0.5 * square(KAPPA / common->kappa));
 }
 
@@ -106,13 +107,16 @@ static void person_step(struct fit *fit, size_t j, struct fit_people_sums *sums)
     const struct consensus_common *common = &fit->common;
     struct consensus_person *next = &fit->people_next[j];
     double slope[FIT_SIDES] = {0.0, 0.0}, curve[FIT_SIDES] = {0.0, 0.0}, chance = 0.0;
+    double together = 1.0, invited = 1.0;
     for (size_t k = fit->first_of_person[j]; k < fit->first_of_person[j + 1]; k++) {
         const struct fit_pair *pair = &fit->pairs[fit->of_person[k]];
         for (int side = 0; side < FIT_SIDES; side++) {
             slope[side] += pair->slope[side];
             curve[side] += pair->curve[side];
         }
-        chance += pair->nothing;
+        chance += pair->alone;
+        together += pair->together;
+        invited += pair->invited;
     }
     const double mean[FIT_SIDES] = {common->hit_mean, common->lure_mean};
     const double spread[FIT_SIDES] = {common->hit_sd, common->lure_sd};
@@ -129,6 +133,7 @@ static void person_step(struct fit *fit, size_t j, struct fit_people_sums *sums)
     double days = fmax(fit->input->days_looked[j], 0.0);
     double rate = (chance + 1.0) / (days + 1.0 / common->chance_per_d);
     next->log_chance_per_d = log(rate);
+    next->log_together = log(together / invited);
     sums->chance_mean += rate;
 }
 
@@ -176,6 +181,7 @@ static void population_all_step(const struct fit *fit, struct consensus_common *
     population_step(people, FIT_LURE, LURE_MEAN, &next->lure_mean, &next->lure_sd);
     next->dips_per_d = (fit->sums.all[FIT_DIP] + RATE_WEIGHT) / days;
     next->lures_per_d = (fit->sums.all[FIT_LURE] + RATE_WEIGHT) / days;
+    next->together_per_d = (fit->sums.together + TOGETHER_WEIGHT) / days;
     next->chance_per_d = (people->chance_mean + next->chance_per_d) / (n + 1.0);
     densities_step(&fit->sums, next);
 }

@@ -5,6 +5,7 @@
 
 #define LOGIT_MOST 30.0 /* beyond it a logit changes nothing */
 #define PAIRS_A_LOG 16  /* so many factors of at most 1 + e^(30 + 3 x 3.75) stay below 1e308 */
+#define ONE_MORE 0.3    /* P(one more mark | marked together) */
 #define SEEN_LEAST 0.05 /* a group stands for at most twenty like it */
 
 /* Nodes and weights of the integral over a normal density, as published in every table. */
@@ -92,6 +93,28 @@ static bool allows(const struct consensus_item *item, int class)
     return class == FIT_DIP ? item->known != CONSENSUS_NOT_DIP : item->known != CONSENSUS_DIP;
 }
 
+/* Marks that meet where nothing is because people marked together, by agreement or by copying: so
+ * many marks, each further one less likely; each by one of the lookers in proportion to a weight.
+ * Joint log-likelihood but for time and density; -INFINITY for fewer than two marks. */
+static double log_together(const struct fit *fit, size_t g)
+{
+    const struct consensus_item *item = &fit->input->items[g];
+    const struct consensus_look *looks = fit->input->looks + item->first_look;
+    struct fit_group *group = &fit->groups[g];
+    double marked = 0.0;
+    group->company = 0.0;
+    if (group->marks < 2.0)
+        return -INFINITY;
+    for (size_t k = 0; k < item->looks; k++) {
+        double log_weight = fit->people[looks[k].person].log_together;
+        group->company += exp(log_weight);
+        marked += looks[k].marked ? log_weight : 0.0;
+    }
+    return log(fit->common.together_per_d) + log(1.0 - ONE_MORE) +
+           (group->marks - 2.0) * log(ONE_MORE) + group->log_orders + marked -
+           group->marks * log(group->company);
+}
+
 /* Joint log-likelihoods of the classes. */
 static void weigh_classes(const struct fit *fit, size_t g)
 {
@@ -102,10 +125,13 @@ static void weigh_classes(const struct fit *fit, size_t g)
     double time = fit_log_time(fit, group);
     group->log_class[FIT_DIP] = log(common->dips_per_d) + group->log_side[FIT_DIP] + time;
     group->log_class[FIT_LURE] = log(common->lures_per_d) + group->log_side[FIT_LURE] + time;
-    group->log_class[FIT_NOTHING] = 0.0;
+    group->log_alone = 0.0;
     for (size_t k = 0; k < item->looks; k++)
         if (looks[k].marked)
-            group->log_class[FIT_NOTHING] += fit->people[looks[k].person].log_chance_per_d;
+            group->log_alone += fit->people[looks[k].person].log_chance_per_d;
+    group->log_together = log_together(fit, g) + time;
+    group->together = 1.0 / (1.0 + exp(group->log_alone - group->log_together));
+    group->log_class[FIT_NOTHING] = fit_log_sum(group->log_alone, group->log_together);
     for (int c = 0; c < FIT_CLASSES; c++)
         group->log_class[c] += group->sure * log(common->sure[c]) +
                                (group->marks - group->sure) * log1p(-common->sure[c]) +
@@ -206,8 +232,9 @@ static void sum_common(const struct fit *fit, size_t g, struct fit_sums *sums)
     const struct fit_group *group = &fit->groups[g];
     const double *p = group->probability;
     if (group->marks > 1.0) {
-        sums->spread += (p[FIT_DIP] + p[FIT_LURE]) * group->spread;
-        sums->centres += (p[FIT_DIP] + p[FIT_LURE]) * (group->marks - 1.0);
+        double agreed = p[FIT_DIP] + p[FIT_LURE] + p[FIT_NOTHING] * group->together;
+        sums->spread += agreed * group->spread;
+        sums->centres += agreed * (group->marks - 1.0);
     }
     for (int c = 0; c < FIT_CLASSES; c++) {
         sums->sure[c] += p[c] * group->sure;
@@ -223,6 +250,7 @@ static void sum_common(const struct fit *fit, size_t g, struct fit_sums *sums)
             sums->xx[c] += p[c] * group->x * group->x;
         }
     }
+    sums->together += item->control ? 0.0 : p[FIT_NOTHING] * group->together;
     sums->survey += item->control ? 0.0 : 1.0;
 }
 
@@ -236,9 +264,15 @@ static void group_sum(struct fit *fit, size_t g, struct fit_sums *sums)
         side_sum(fit, g, side, &nodes[side]);
     weigh_classes(fit, g);
     sums->objective += classify(fit, g);
-    for (size_t k = 0; k < item->looks; k++)
-        pairs[k].nothing =
-            fit->input->looks[item->first_look + k].marked ? group->probability[FIT_NOTHING] : 0.0;
+    double together = group->probability[FIT_NOTHING] * group->together;
+    double alone = group->probability[FIT_NOTHING] - together;
+    double invited = group->marks < 2.0 ? 0.0 : together * group->marks / group->company;
+    for (size_t k = 0; k < item->looks; k++) {
+        bool marked = fit->input->looks[item->first_look + k].marked;
+        pairs[k].alone = marked ? alone : 0.0;
+        pairs[k].together = marked ? together : 0.0;
+        pairs[k].invited = invited;
+    }
     for (int side = 0; side < FIT_SIDES; side++) {
         double unseen = group->unseen[side];
         double like = group->complete || unseen > 1.0 - SEEN_LEAST

@@ -111,6 +111,7 @@ static void describe_group(const struct consensus_input *input, size_t g, struct
             group->sure += looks[k].sure != 0;
             sum += (double)looks[k].centre_d;
         }
+    group->log_orders = lgamma(group->marks + 1.0);
     if (group->marks == 0.0)
         return;
     for (size_t k = 0; k < item->looks; k++) {
@@ -143,6 +144,7 @@ static void start_rates(struct fit *fit)
         days += fmax(input->days_looked[j], 0.0);
     fit->common.dips_per_d = dips / fmax(input->days_total, 1.0);
     fit->common.lures_per_d = lures / fmax(input->days_total, 1.0);
+    fit->common.together_per_d = lures / fmax(input->days_total, 1.0);
     fit->common.chance_per_d = chance / fmax(days, 1.0);
 }
 
@@ -154,14 +156,14 @@ static void start(struct fit *fit)
     if (from != NULL && from->common != NULL)
         fit->common = *from->common;
     struct consensus_person typical = {fit->common.hit_mean, fit->common.lure_mean,
-                                       log(fit->common.chance_per_d)};
+                                       log(fit->common.chance_per_d), 0.0};
     for (size_t j = 0; j < fit->input->people; j++) {
         fit->people[j] = typical;
         if (from == NULL || j >= from->people_count)
             continue;
         const struct consensus_person *person = &from->people[j];
         if (isfinite(person->hit_logit) && isfinite(person->lure_logit) &&
-            isfinite(person->log_chance_per_d))
+            isfinite(person->log_chance_per_d) && isfinite(person->log_together))
             fit->people[j] = *person;
     }
 }
@@ -196,7 +198,8 @@ static void go(struct fit *fit, double far)
         fit->people[j] =
             (struct consensus_person){between(one->hit_logit, two->hit_logit, far),
                                       between(one->lure_logit, two->lure_logit, far),
-                                      between(one->log_chance_per_d, two->log_chance_per_d, far)};
+                                      between(one->log_chance_per_d, two->log_chance_per_d, far),
+                                      between(one->log_together, two->log_together, far)};
     }
 }
 
