@@ -202,6 +202,25 @@ static void a_database_cut_short_is_told_and_not_made_worse(void **state)
     place->store = open_store(place->path);
 }
 
+/* Damage that no question happens to meet is found when a copy is made, which is then not kept. */
+static void a_copy_of_a_damaged_database_is_not_kept(void **state)
+{
+    struct place *place = *state;
+    int version;
+    struct store_review_new review = a_review(place, "k1", 1);
+    must(add_review(place->store, &review, &error));
+    close_store(place);
+    run_sql(place->path, "PRAGMA writable_schema = ON; UPDATE sqlite_schema SET sql ="
+                         " 'CREATE INDEX mark_review ON mark (starts)' WHERE name = 'mark_review'");
+    place->store = open_store(place->path);
+    must_fail(store_backup(place->store, in_folder(place, "copy.db"), &error), BASE_CORRUPT);
+    assert_int_equal(access(in_folder(place, "copy.db"), F_OK), -1);
+    assert_int_equal(access(in_folder(place, "copy.db.part"), F_OK), -1);
+    close_store(place);
+    must_fail(store_backup_check(place->path, &version, &error), BASE_CORRUPT);
+    place->store = open_store(place->path);
+}
+
 /* Bytes overwritten at random. What is read may be wrong where SQLite itself cannot know, but every
  * verb ends, with or without an error. */
 static void a_database_overwritten_in_places_never_crashes_us(void **state)
@@ -301,6 +320,7 @@ int main(void)
         IN_PLACE(points_that_were_overwritten_are_told),
         IN_PLACE(each_flipped_bit_of_the_points_is_noticed),
         IN_PLACE(a_database_cut_short_is_told_and_not_made_worse),
+        IN_PLACE(a_copy_of_a_damaged_database_is_not_kept),
         IN_PLACE(a_database_overwritten_in_places_never_crashes_us),
         IN_PLACE(a_wal_cut_short_gives_the_transactions_before_the_cut),
     };
