@@ -13,6 +13,9 @@ function read_truth(   line, f, head, n, i) {
     }
     close(truth)
 }
+function measured(value, digits) {
+    return value == "" ? "-" : sprintf("%." digits "f", value)
+}
 function matches(star, mid,   i) {
     for (i = 1; i <= dips; i++)
         if (dip_star[i] == star && (mid - dip_mid[i]) ^ 2 < (dip_hours[i] / 48) ^ 2) {
@@ -32,14 +35,17 @@ NR == 1 { for (i = 1; i <= NF; i++) at[$i] = i; next }
 {
     real = matches($at["star"], $at["mid_time"])
     total++
-    if ($at["probability"] >= 0.9) { likely++; right += real }
+    if ($at["probability"] >= 0.9) {
+        likely++
+        right += real
+    }
     if (total <= 25)
-        printf "%-9s %-10s %11.4f %7.1f %10.0f %9.2f %6d %6d  %s\n", $at["candidate"], $at["star"], \
-            $at["probability"], $at["snr"], $at["depth_ppm"], $at["duration_h"], $at["marks"], \
-            $at["looks"], real ? "a dip" : "no dip"
+        printf "%-9s %-10s %11.4f %7s %10s %9s %6d %6d  %s\n", $at["candidate"], $at["star"], \
+            $at["probability"], measured($at["snr"], 1), measured($at["depth_ppm"], 0), \
+            measured($at["duration_h"], 2), $at["marks"], $at["looks"], real ? "a dip" : "no dip"
 }
 END {
     for (i in seen) found++
     printf "\n%d candidates; %d at 0.9 or more, of which %d are dips of the truth. ", total, likely, right
-    printf "%d of the %d dips in the truth are on the list.\n", found, dips
+    printf "%d of the %d dips in the truth are somewhere on the list.\n", found, dips
 }

@@ -55,11 +55,21 @@ say "3. Rehearsal reviewers look at what the server hands them, and answer over 
 
 say "4. Running the consensus."
 ask() { curl -sS --fail-with-body -H "Authorization: Bearer $token" "$@"; }
-ask -X POST "$address/api/v1/consensus-runs" >/dev/null
-for _ in $(seq 600); do
-    state=$(ask "$address/api/v1/consensus-runs/current")
-    case $state in *'"working"'*) sleep 0.2 ;; *) break ;; esac
+run_ends() {
+    for _ in $(seq 600); do
+        state=$(ask "$address/api/v1/consensus-runs/current")
+        case $state in *'"working"'*) sleep 0.2 ;; *) return 0 ;; esac
+    done
+    echo "The consensus run did not end within two minutes; see $place/server.log." >&2
+    return 1
+}
+# The reviews may have started a run by themselves; ours comes after it, over all of them.
+run_ends
+for _ in $(seq 20); do
+    answer=$(ask -X POST "$address/api/v1/consensus-runs" 2>&1) && break
+    case $answer in *409*) run_ends ;; *) echo "$answer" >&2; exit 1 ;; esac
 done
+run_ends
 ask "$address/api/v1/candidates?format=csv&sort=-probability" >"$place/candidates.csv"
 
 say "5. The top of the ranked list. The last column is the demo's own truth, which no reviewer saw."
