@@ -17,7 +17,7 @@ struct scene {
     gsl_rng *random;
 };
 
-/* A star that varies by 1 %, with noise of 300 ppm and one dip of 5,000 ppm and 5 h at day 7. */
+/* A star that varies by 0.3 %, with noise of 300 ppm and one dip of 5,000 ppm and 5 h at day 7. */
 static void paint(struct scene *scene, double depth)
 {
     scene->random = gsl_rng_alloc(gsl_rng_mt19937);
@@ -25,7 +25,7 @@ static void paint(struct scene *scene, double depth)
     for (size_t i = 0; i < POINTS; i++) {
         double t = (double)i / 48.0;
         scene->time[i] = t;
-        scene->flux[i] = 1.0 + 0.01 * sin(t * 1.1) + gsl_ran_gaussian(scene->random, 3e-4);
+        scene->flux[i] = 1.0 + 0.003 * sin(t * 1.1) + gsl_ran_gaussian(scene->random, 3e-4);
         if (fabs(t - 7.0) < 2.5 / 24.0)
             scene->flux[i] -= depth;
     }
