@@ -42,20 +42,26 @@ struct consensus_input {
     double days_total;         /* days of distinct survey light curve looked at by anyone */
 };
 
+/* The densities of x are mixtures of triangles about knots. */
+#define CONSENSUS_X_KNOTS 19
+#define CONSENSUS_X_FIRST (-2.4)
+#define CONSENSUS_X_STEP 0.3
+
 /* What is common to all reviewers, and what one reviewer is, as the model's own numbers. x is
  * ln(max(SNR, 1) / 10). */
 struct consensus_common {
     double beta, gamma;        /* growth of the hit and lure logits with x */
     double tau_dip, tau_lure;  /* spread of the logits from one dip or lure to another */
     double kappa;              /* spread of the marks' centres, in durations */
-    double dips_per_d;         /* rho: of survey light curve, marked or not */
+    double dips_per_d;         /* of survey light curve; those that somebody marked */
     double lures_per_d;        /* the same for lures */
     double chance_per_d;       /* a typical reviewer's chance marks */
     double together_per_d;     /* places where nothing is that people mark together */
     double hit_mean, hit_sd;   /* logits at SNR 10 over the reviewers */
     double lure_mean, lure_sd; /* the same for lures */
-    double x_mean[3], x_sd[3]; /* density of x for dips, lures, nothing */
-    double sure[3];            /* P(sure | marked) for dips, lures, nothing */
+    double x_mean[3], x_sd[3]; /* of x for dips, lures, nothing; survey groups that were marked */
+    double x_share[3][CONSENSUS_X_KNOTS]; /* its density: weights of the knots */
+    double sure[3];                       /* P(sure | marked) for dips, lures, nothing */
 };
 struct consensus_person {
     double hit_logit, lure_logit; /* at SNR 10 */

@@ -57,13 +57,15 @@ struct fit_group {
 
 /* Sums over groups that the common numbers are made of. */
 struct fit_sums {
-    double objective;                                /* without the priors */
-    double slope[FIT_SIDES], slope_curve[FIT_SIDES]; /* by beta, gamma */
+    double objective;                                                      /* without the priors */
+    double slope[FIT_SIDES], slope_curve[FIT_SIDES];                       /* by beta, gamma */
+    double all_slope[FIT_SIDES], all_curve[FIT_SIDES], curve_x[FIT_SIDES]; /* by all logits alike */
     double tau[FIT_SIDES], tau_curve[FIT_SIDES];
     double spread, centres; /* for kappa */
     double sure[FIT_CLASSES], marks[FIT_CLASSES];
     double count[FIT_CLASSES], x[FIT_CLASSES], xx[FIT_CLASSES]; /* survey groups with an SNR */
-    double all[FIT_CLASSES];                                    /* survey groups */
+    double knots[FIT_CLASSES][CONSENSUS_X_KNOTS];
+    double all[FIT_CLASSES]; /* survey groups */
     double shown[FIT_SIDES]; /* the same, and those like them that nobody marked */
     double together;         /* survey groups marked together */
     double survey;           /* number of survey groups */
@@ -99,6 +101,7 @@ struct fit {
     struct fit_sums sums;
     struct fit_people_sums people_sum;
     union fit_nodes scale[FIT_SIDES]; /* e^(-tau u) */
+    double shift[FIT_SIDES];          /* of every logit in the next step, with the growth's step */
     bool observed; /* for intervals: slopes and curves are of the observed likelihood, see below */
 };
 
@@ -135,14 +138,25 @@ static inline double fit_log_sum(double a, double b)
     return most == -INFINITY ? most : most + log(exp(a - most) + exp(b - most));
 }
 
-/* log of the normal density of x in a class; 0 where nothing was measured. */
+/* Knots of the density of x. Where x lies among the knots: at `at`, `past` of the way to the next.
+ */
+static inline size_t fit_knot(double x, double *past)
+{
+    double at = (x - CONSENSUS_X_FIRST) / CONSENSUS_X_STEP;
+    at = fmin(fmax(at, 0.0), CONSENSUS_X_KNOTS - 1.000001);
+    *past = at - floor(at);
+    return (size_t)at;
+}
+
 static inline double fit_log_density(const struct fit *fit, const struct fit_group *group,
                                      int class)
 {
     if (group->x != group->x)
         return 0.0;
-    double z = (group->x - fit->common.x_mean[class]) / fit->common.x_sd[class];
-    return -0.5 * z * z - log(fit->common.x_sd[class]) - 0.9189385332046727;
+    double past;
+    size_t knot = fit_knot(group->x, &past);
+    const double *share = fit->common.x_share[class];
+    return log(((1.0 - past) * share[knot] + past * share[knot + 1]) / CONSENSUS_X_STEP);
 }
 
 /* log S: how well the centres of the marks agree in time. */

@@ -21,27 +21,45 @@
 #define SURE 0.5
 #define SURE_WEIGHT 4.0
 #define X_WEIGHT 4.0
-#define X_SD_LEAST 0.15
+#define X_SD_LEAST 0.2
+#define X_NORMAL_WEIGHT 80.0 /* groups that hold the density of x to a normal one */
+#define X_SHARE_LEAST 1e-6
 #define RATE_WEIGHT 0.5
 #define TOGETHER_WEIGHT 0.1
 #define STEP_MOST 1.5 /* of a logit, a round */
 static const double x_mean[FIT_CLASSES] = {0.0, -0.5, -1.9};
 static const double x_sd[FIT_CLASSES] = {0.7, 0.6, 0.3};
 
+/* The shares of the knots in a normal density. */
+static void knots_normal(double mean, double sd, double *out)
+{
+    double sum = 0.0;
+    for (int k = 0; k < CONSENSUS_X_KNOTS; k++) {
+        double z = (CONSENSUS_X_FIRST + CONSENSUS_X_STEP * k - mean) / sd;
+        out[k] = exp(-0.5 * z * z) + X_SHARE_LEAST;
+        sum += out[k];
+    }
+    for (int k = 0; k < CONSENSUS_X_KNOTS; k++)
+        out[k] /= sum;
+}
+
 struct consensus_common fit_common_start(void)
 {
-    return (struct consensus_common){.beta = BETA,
-                                     .gamma = 0.3,
-                                     .tau_dip = 0.7,
-                                     .tau_lure = 0.7,
-                                     .kappa = KAPPA,
-                                     .hit_mean = HIT_MEAN,
-                                     .hit_sd = SPREAD,
-                                     .lure_mean = LURE_MEAN,
-                                     .lure_sd = SPREAD,
-                                     .x_mean = {x_mean[0], x_mean[1], x_mean[2]},
-                                     .x_sd = {x_sd[0], x_sd[1], x_sd[2]},
-                                     .sure = {SURE, SURE, SURE}};
+    struct consensus_common common = {.beta = BETA,
+                                      .gamma = 0.3,
+                                      .tau_dip = 0.7,
+                                      .tau_lure = 0.7,
+                                      .kappa = KAPPA,
+                                      .hit_mean = HIT_MEAN,
+                                      .hit_sd = SPREAD,
+                                      .lure_mean = LURE_MEAN,
+                                      .lure_sd = SPREAD,
+                                      .x_mean = {x_mean[0], x_mean[1], x_mean[2]},
+                                      .x_sd = {x_sd[0], x_sd[1], x_sd[2]},
+                                      .sure = {SURE, SURE, SURE}};
+    for (int c = 0; c < FIT_CLASSES; c++)
+        knots_normal(x_mean[c], x_sd[c], common.x_share[c]);
+    return common;
 }
 
 static double limited(double value, double most)
@@ -124,8 +142,10 @@ static void person_step(struct fit *fit, size_t j, struct fit_people_sums *sums)
         double *logit = side == FIT_DIP ? &next->hit_logit : &next->lure_logit;
         double at = side == FIT_DIP ? fit->people[j].hit_logit : fit->people[j].lure_logit;
         double pull = 1.0 / square(spread[side]);
-        *logit = at + limited((slope[side] - (at - mean[side]) * pull) / (curve[side] + pull),
-                              STEP_MOST);
+        *logit =
+            at +
+            limited((slope[side] - (at - mean[side]) * pull) / (curve[side] + pull), STEP_MOST) +
+            fit->shift[side];
         sums->deviation[side] += *logit - mean[side];
         sums->square[side] += square(*logit - mean[side]);
         sums->known[side] += curve[side] / (curve[side] + pull);
@@ -161,6 +181,8 @@ static void population_step(const struct fit_people_sums *sums, int side, double
     *mean += limited(step, STEP_MOST);
 }
 
+/* Mean and spread of x in each class, and its density: a mixture of triangles at the knots, held
+ * to the normal density of that mean and spread by so many groups. */
 static void densities_step(const struct fit_sums *sums, struct consensus_common *next)
 {
     for (int c = 0; c < FIT_CLASSES; c++) {
@@ -169,6 +191,11 @@ static void densities_step(const struct fit_sums *sums, struct consensus_common 
         double second = (sums->xx[c] + X_WEIGHT * (square(x_sd[c]) + square(x_mean[c]))) / n;
         next->x_mean[c] = mean;
         next->x_sd[c] = sqrt(fmax(second - square(mean), square(X_SD_LEAST)));
+        double expected[CONSENSUS_X_KNOTS];
+        knots_normal(mean, next->x_sd[c], expected);
+        for (int k = 0; k < CONSENSUS_X_KNOTS; k++)
+            next->x_share[c][k] = (sums->knots[c][k] + X_NORMAL_WEIGHT * expected[k]) /
+                                  (sums->count[c] + X_NORMAL_WEIGHT);
         next->sure[c] = (sums->sure[c] + SURE_WEIGHT * SURE) / (sums->marks[c] + SURE_WEIGHT);
     }
 }
@@ -186,20 +213,29 @@ static void population_all_step(const struct fit *fit, struct consensus_common *
     densities_step(&fit->sums, next);
 }
 
+/* Newton step of beta or gamma. Growth is counted from where most is known, so that all logits
+ * shift against it: otherwise the two would chase each other along a narrow ridge. */
+static double growth_step(struct fit *fit, int side, double expected, double sd)
+{
+    const struct fit_sums *sums = &fit->sums;
+    double pull = 1.0 / square(sd), now = fit_growth(&fit->common, side);
+    double middle = sums->curve_x[side] / (sums->all_curve[side] + 1e-9);
+    double slope = sums->slope[side] - middle * sums->all_slope[side] - (now - expected) * pull;
+    double curve = sums->slope_curve[side] - middle * sums->curve_x[side];
+    double step = limited(slope / (fmax(curve, 0.0) + pull), STEP_MOST);
+    fit->shift[side] = -step * middle;
+    return now + step;
+}
+
 void fit_step(struct fit *fit, bool population)
 {
+    const struct fit_sums *sums = &fit->sums;
+    struct consensus_common *next = &fit->common_next;
+    *next = fit->common;
+    next->beta = growth_step(fit, FIT_DIP, BETA, BETA_SD);
+    next->gamma = growth_step(fit, FIT_LURE, GAMMA, GAMMA_SD);
     base_pool_for(fit->settings->pool, fit->people_block_count, block_step, fit);
     add_blocks(fit);
-    const struct fit_sums *sums = &fit->sums;
-    const struct consensus_common *now = &fit->common;
-    struct consensus_common *next = &fit->common_next;
-    *next = *now;
-    next->beta += limited((sums->slope[FIT_DIP] - (now->beta - BETA) / square(BETA_SD)) /
-                              (sums->slope_curve[FIT_DIP] + 1.0 / square(BETA_SD)),
-                          STEP_MOST);
-    next->gamma += limited((sums->slope[FIT_LURE] - (now->gamma - GAMMA) / square(GAMMA_SD)) /
-                               (sums->slope_curve[FIT_LURE] + 1.0 / square(GAMMA_SD)),
-                           STEP_MOST);
     double *tau[FIT_SIDES] = {&next->tau_dip, &next->tau_lure};
     for (int side = 0; side < FIT_SIDES; side++) {
         double pull = 1.0 / square(TAU_SD);

@@ -196,6 +196,9 @@ static void side_derive(const struct fit *fit, size_t g, int side, const struct 
     double x = fit_x(fit, group, side);
     sums->slope[side] += x * slope;
     sums->slope_curve[side] += x * x * curve;
+    sums->all_slope[side] += slope;
+    sums->all_curve[side] += curve;
+    sums->curve_x[side] += x * curve;
     for (int m = 0; m < FIT_NODES; m++) {
         double u = fit_node_u.at[m];
         sums->tau[side] += u * (real.at[m] * group->marks - weight.at[m] * marked.at[m]);
@@ -245,6 +248,12 @@ static void sum_common(const struct fit *fit, size_t g, struct fit_sums *sums)
         if (c != FIT_NOTHING)
             sums->shown[c] += p[c] / fmax(1.0 - group->unseen[c], SEEN_LEAST);
         if (group->x == group->x) {
+            double past;
+            size_t knot = fit_knot(group->x, &past);
+            const double *share = fit->common.x_share[c] + knot;
+            double right = past * share[1] / ((1.0 - past) * share[0] + past * share[1]);
+            sums->knots[c][knot] += p[c] * (1.0 - right);
+            sums->knots[c][knot + 1] += p[c] * right;
             sums->count[c] += p[c];
             sums->x[c] += p[c] * group->x;
             sums->xx[c] += p[c] * group->x * group->x;
