@@ -63,6 +63,7 @@ void cli_signals_catch(void);
 
 extern const struct cli_command cli_commands[]; /* ended by a NULL name */
 
+int cli_backup(int argc, char **argv);
 int cli_consensus(int argc, char **argv);
 int cli_export(int argc, char **argv);
 int cli_invent(int argc, char **argv);

@@ -23,6 +23,8 @@ const struct cli_command cli_commands[] = {
     {"rehearse", cli_rehearse, "--server URL [--reviewers N] [--looks N] [--seed N]",
      "Have rehearsal reviewers work on a running server over HTTP."},
     {"invent", cli_invent, "--output FOLDER [--seed N]", "Make the invented Long Reach demo survey."},
+    {"backup", cli_backup, "--database FILE --output FILE | --check FILE | --database FILE --restore FILE",
+     "Copy a database and verify the copy, check one, or put one back; the server must be stopped."},
     {"migrate", cli_migrate, "--database FILE", "Bring a database up to this program's version."},
     {"version", cli_version, "", "Say which version this is."},
     {NULL, NULL, NULL, NULL}};

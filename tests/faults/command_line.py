@@ -11,7 +11,7 @@ import tempfile
 sys.path.insert(0, str(pathlib.Path(__file__).resolve().parent.parent))
 from checks import PROGRAM, ROOT, check, finish  # noqa: E402
 
-COMMANDS = ['serve', 'load', 'consensus', 'export', 'reviews', 'person', 'rehearse', 'invent', 'migrate', 'version']
+COMMANDS = ['backup', 'serve', 'load', 'consensus', 'export', 'reviews', 'person', 'rehearse', 'invent', 'migrate', 'version']
 
 
 def run(*arguments, text=None):
@@ -107,6 +107,30 @@ def exports(place):
         run('export', '--database', database, '--table', 'candidates', '--format', 'csv', '--run', 99)))
 
 
+def backups(place):
+    database, copy = place / 'demo.db', place / 'copy.db'
+    made = run('backup', '--database', database, '--output', copy)
+    check('a backup is made and said to be verified', made.returncode == 0 and 'verified' in made.stdout, made.stderr)
+    again = run('backup', '--database', database, '--output', copy)
+    check('a backup never overwrites', one_sentence(again), again.stderr)
+    sound = run('backup', '--check', copy)
+    check('a backup is checked', sound.returncode == 0 and 'sound' in sound.stdout, sound.stderr)
+    other = place / 'other.db'
+    put = run('backup', '--database', other, '--restore', copy)
+    check('a backup is put back', put.returncode == 0, put.stderr)
+    tables = [run('export', '--database', at, '--table', 'reviewers', '--format', 'json').stdout
+              for at in (database, other)]
+    check('a restored copy answers the same export', tables[0] == tables[1] != '', tables)
+    put = run('backup', '--database', other, '--restore', copy)
+    check('restoring over a database keeps the one that was there',
+          put.returncode == 0 and len(list(place.glob('other.db.replaced-*'))) == 1, put.stderr)
+    spoiled = place / 'spoiled.db'
+    spoiled.write_bytes(copy.read_bytes()[:8192])
+    bad = run('backup', '--check', spoiled)
+    check('a damaged backup is told', one_sentence(bad), bad.stderr)
+    check('backup without its options is wrong usage', run('backup').returncode == 2)
+
+
 def main():
     usage()
     with tempfile.TemporaryDirectory(prefix='ebbmark-cli-') as folder:
@@ -114,6 +138,7 @@ def main():
         missing_things(place)
         people(place)
         exports(place)
+        backups(place)
     finish()
 
 
