@@ -7,6 +7,7 @@ import { inksNow } from './paper.js';
 import { curveOf, drawThumbnail, stretchOf } from './thumbnail.js';
 
 const BAR = 9;
+const BARS_MOST = 15;
 /** What the flags mean; one that is not listed is shown by its name. @type {Record<string, string>} */
 const FLAGS = {
     near_gap: 'An edge of the dip lies within half its duration of a gap.',
@@ -43,7 +44,7 @@ export function termsSentence(terms, logOdds) {
 }
 
 /** @param {number} value */
-const signed = (value) => (value > 0 ? '+' : '') + format.fixed(value, 2);
+const signed = (value) => (value >= 0.005 ? '+' : '') + format.fixed(value, 2);
 
 /** @param {any} mark */
 function markItem(mark) {
@@ -81,13 +82,13 @@ export function makeCloser({ onVerdict }) {
     /** Marks as thin bars under the curve, stronger for more weight.
      * @param {any} one */
     async function draw(one) {
-        const bars = Math.min(one.marks.length, 12) * BAR;
+        const bars = Math.min(one.marked_by.length, BARS_MOST) * BAR;
         const drawn = drawThumbnail(canvas, await curveOf(one), one, inksNow(), bars + 6);
         if (drawn === null) return;
         const { paper, plot, view } = drawn;
         const inks = inksNow();
         paper.pen.fillStyle = inks.consensus;
-        one.marks.slice(0, 12).forEach((/** @type {any} */ mark, /** @type {number} */ at) => {
+        one.marked_by.slice(0, BARS_MOST).forEach((/** @type {any} */ mark, /** @type {number} */ at) => {
             const left = timeToX(view, plot, mark.starts);
             const wide = Math.max(timeToX(view, plot, mark.ends) - left, 2);
             paper.pen.globalAlpha = 0.35 + 0.65 * Math.min(1, Math.max(0, mark.weight ?? 0));
@@ -112,7 +113,7 @@ export function makeCloser({ onVerdict }) {
             ...flagSentences(one.flags),
         ];
         say(byPart('closer-why'), why.filter((text) => text !== '').join(' '));
-        byPart('closer-marks').replaceChildren(...one.marks.map(markItem));
+        byPart('closer-marks').replaceChildren(...one.marked_by.map(markItem));
         const verdicts = one.verdicts.map(verdictItem);
         byPart('closer-verdicts').replaceChildren(...(verdicts.length > 0 ? verdicts : [el('li', {}, 'None yet.')]));
         for (const button of dialog.querySelectorAll('button[data-verdict]'))

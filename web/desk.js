@@ -130,6 +130,7 @@ function fillSheet() {
     const { segment } = model.sheet.lease;
     const span = `Days ${format.fixed(segment.starts, 2)} to ${format.fixed(segment.ends, 2)}`;
     say(byPart('title'), span);
+    byPart('sheet').dataset.segment = segment.id;
     say(
         byPart('subtitle'),
         `${format.counted(model.curve.times.length, 'point')} · ${format.axis(segment.time_reference)}`
@@ -413,6 +414,8 @@ function wire() {
     watchInks(() => {
         inks = inksNow();
         redraw('base', 'marks', 'overview', 'loupe');
+        /* A printer does not wait for the next frame. */
+        drawDue();
     });
     document.addEventListener('visibilitychange', () => {
         stopwatch.setSeen(document.visibilityState === 'visible');

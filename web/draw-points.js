@@ -22,16 +22,32 @@ export function drawPoints(paper, inks, curve, view, plot, { dot = 0 } = {}) {
     pen.rect(plot.left, plot.top, plot.width, plot.height);
     pen.clip();
     if (to - from > plot.width * DOTS_TO_A_PIXEL) drawColumns(paper, inks, curve, view, plot);
-    else {
-        const size = dot || Math.min(3.5, Math.max(2, (plot.width / Math.max(to - from, 1)) * 0.6));
-        pen.fillStyle = inks.ink;
-        for (let at = from; at < curve.times.length && at <= to; at++) {
-            const x = timeToX(view, plot, curve.times[at]);
-            const y = fluxToY(view, plot, curve.flux[at]);
-            pen.fillRect(x - size / 2, y - size / 2, size, size);
+    else drawDots(pen, inks, curve, view, plot, dot, [from, Math.min(to, curve.times.length - 1)]);
+    pen.restore();
+}
+
+/**
+ * Every point by itself, larger the fewer there are.
+ * @param {CanvasRenderingContext2D} pen @param {import('./paper.js').Inks} inks
+ * @param {{times: ArrayLike<number>, flux: ArrayLike<number>}} curve
+ * @param {View} view @param {Plot} plot @param {number} dot 0: as fits
+ * @param {[number, number]} range first and last index
+ */
+function drawDots(pen, inks, curve, view, plot, dot, [from, to]) {
+    const apart = plot.width / Math.max(to - from, 1);
+    const size = dot || Math.min(4.5, Math.max(2, 1.3 + 1.2 * apart));
+    pen.fillStyle = inks.ink;
+    pen.beginPath();
+    for (let at = from; at <= to; at++) {
+        const x = timeToX(view, plot, curve.times[at]);
+        const y = fluxToY(view, plot, curve.flux[at]);
+        if (size < 2.5) pen.rect(x - size / 2, y - size / 2, size, size);
+        else {
+            pen.moveTo(x + size / 2, y);
+            pen.arc(x, y, size / 2, 0, 2 * Math.PI);
         }
     }
-    pen.restore();
+    pen.fill();
 }
 
 /**

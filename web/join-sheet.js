@@ -32,8 +32,8 @@ export function whatIsKept() {
         el(
             'p',
             {},
-            'No e-mail, no name, no age, no place; nothing is counted or passed on. Your handle is ',
-            'not published unless you ask for credit under My record. You can leave there at any ',
+            'No e-mail, no name, no age, no place; nothing goes to other sites. Your handle is not ',
+            'published unless you ask for credit under My record. You can leave there at any ',
             'time: your handle is then removed, and your reviews stay without it.'
         )
     );

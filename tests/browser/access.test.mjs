@@ -52,9 +52,9 @@ const PAGES = {
     },
     'My record': async (page) => {
         await enterAsGuest(page);
-        const title = await segmentShown(page);
+        const segment = await segmentShown(page);
         await page.getByRole('button', { name: 'No dips here' }).click();
-        await segmentShown(page, title);
+        await segmentShown(page, segment);
         await page.getByRole('button', { name: 'waiting to send' }).waitFor({ state: 'hidden' });
         await page.goto('/record');
         await page.getByText('No dips', { exact: true }).waitFor();

@@ -85,13 +85,13 @@ export async function enterAsGuest(page) {
     await segmentShown(page);
 }
 
-/** @param {Page} page @param {string} [other] a title that it must not be any more */
-export async function segmentShown(page, other) {
-    const title = page.getByRole('heading', { level: 1, name: /^Days / });
-    await title.waitFor();
-    if (other !== undefined)
-        await page.waitForFunction((old) => document.querySelector('[data-part="title"]')?.textContent !== old, other);
-    return String(await title.textContent());
+/** Waits for a segment on the Desk. @param {Page} page @param {string} [other] one that it must not be any more */
+export async function segmentShown(page, other = '') {
+    await page.waitForFunction((old) => {
+        const sheet = /** @type {HTMLElement | null} */ (document.querySelector('[data-part="sheet"]:not([hidden])'));
+        return sheet !== null && (sheet.dataset.segment ?? old) !== old;
+    }, other);
+    return String(await page.locator('[data-part="sheet"]').getAttribute('data-segment'));
 }
 
 /** @param {Page} page */

@@ -1,7 +1,7 @@
 /** The Desk as reviewers use it: by mouse, by keyboard alone, by finger, and without a connection. */
 import assert from 'node:assert/strict';
 import test from 'node:test';
-import { bench, chart, close, drag, enterAsGuest, fingers, newHandle, PHONE, record, recordOf, rows, segmentShown, tabTo } from './bench.mjs';
+import { bench, chart, close, DESKTOP, drag, enterAsGuest, fingers, newHandle, PHONE, record, recordOf, rows, segmentShown, tabTo } from './bench.mjs';
 
 const it = bench();
 const near = (/** @type {number} */ one, /** @type {number} */ other, /** @type {number} */ within) =>
@@ -15,14 +15,14 @@ test('somebody joins, boxes a dip with the mouse, sends it, and finds it in the 
     await join.getByLabel('Handle').fill(handle);
     await join.getByLabel('Passphrase').fill('low water at noon');
     await join.getByRole('button', { name: 'Join' }).click();
-    const title = await segmentShown(page);
+    const segment = await segmentShown(page);
     assert.match(page.url(), /\/desk$/);
     assert.equal(await page.getByRole('button', { name: 'Send marks' }).getAttribute('aria-disabled'), 'true');
     await drag(page, [0.4, 0.3], [0.5, 0.6]);
     const [drawn] = await rows(page);
     near(drawn.length, (drawn.ends - drawn.starts) * 24, 0.01);
     await page.getByRole('button', { name: 'Send marks' }).click();
-    await segmentShown(page, title);
+    await segmentShown(page, segment);
     const all = await recordOf(page, 1);
     const [mark] = all.reviews[0].marks;
     near(mark.starts, drawn.starts, 1e-4);
@@ -40,7 +40,7 @@ test('a box lies where the mouse drew it', async () => {
     const page = await it.page();
     await enterAsGuest(page);
     const { width } = await chart(page);
-    const [, from, to] = /** @type {RegExpExecArray} */ (/([\d.]+) to ([\d.]+)/.exec(await segmentShown(page)));
+    const [, from, to] = /** @type {RegExpExecArray} */ (/([\d.]+) to ([\d.]+)/.exec(String(await page.locator('[data-part="title"]').textContent())));
     const timeAt = (/** @type {number} */ share) =>
         Number(from) + ((share * width - 72) / (width - 82)) * (Number(to) - Number(from));
     await drag(page, [0.3, 0.2], [0.42, 0.7]);
@@ -102,9 +102,9 @@ test('a row’s fields change its mark, and refuse what cannot be', async () => 
     await page.getByText('This is not a number.').waitFor();
     await page.getByRole('button', { name: 'Mark 1 is sure; make it unsure' }).click();
     await page.getByRole('button', { name: 'Keeps changing' }).click();
-    const title = await segmentShown(page);
+    const segment = await segmentShown(page);
     await page.getByRole('button', { name: 'Send marks' }).click();
-    await segmentShown(page, title);
+    await segmentShown(page, segment);
     const [review] = (await recordOf(page, 1)).reviews;
     assert.equal(review.marks[0].certainty, 'unsure');
     near((review.marks[0].high - review.marks[0].low) * 1e6, 2500, 0.5);
@@ -118,7 +118,7 @@ test('the whole job is done by keyboard alone', async () => {
     await page.getByRole('button', { name: 'Look around as a guest' }).waitFor();
     await tabTo(page, (name) => name === 'Look around as a guest');
     await page.keyboard.press('Enter');
-    const title = await segmentShown(page);
+    const segment = await segmentShown(page);
     await page.waitForFunction(() => document.activeElement?.getAttribute('data-part') === 'strip');
     for (let press = 0; press < 6; press++) await page.keyboard.press('Shift+ArrowRight');
     await page.keyboard.press('Enter');
@@ -137,7 +137,7 @@ test('the whole job is done by keyboard alone', async () => {
     await page.keyboard.press('Space');
     await tabTo(page, (name) => name === 'Send marks');
     await page.keyboard.press('Enter');
-    const second = await segmentShown(page, title);
+    const second = await segmentShown(page, segment);
     await page.waitForFunction(() => document.activeElement?.getAttribute('data-part') === 'strip');
     await page.keyboard.press('Control+Enter');
     await segmentShown(page, second);
@@ -228,11 +228,11 @@ test('the view without the trend is another picture of the same marks', async ()
     const page = await it.page();
     await enterAsGuest(page);
     await drag(page, [0.4, 0.3], [0.5, 0.6]);
-    const picture = () => page.locator('[data-part="strip-points"]').evaluate((canvas) => /** @type {HTMLCanvasElement} */ (canvas).toDataURL().length);
+    const picture = () => page.locator('[data-part="strip-points"]').evaluate((canvas) => /** @type {HTMLCanvasElement} */ (canvas).toDataURL());
     const before = { rows: await rows(page), picture: await picture() };
     await page.getByRole('button', { name: 'Trend removed' }).click();
     await page.waitForFunction(
-        (size) => /** @type {HTMLCanvasElement} */ (document.querySelector('[data-part="strip-points"]')).toDataURL().length !== size,
+        (old) => /** @type {HTMLCanvasElement} */ (document.querySelector('[data-part="strip-points"]')).toDataURL() !== old,
         before.picture
     );
     assert.deepEqual(await rows(page), before.rows);
@@ -253,9 +253,9 @@ test('on a phone one finger draws, two fingers zoom, and what is sent is what wa
     const text = await page.getByRole('slider', { name: 'Stretch shown above' }).getAttribute('aria-valuetext');
     const [from, to] = (text?.match(/[\d.]+/g) ?? []).map(Number);
     assert.ok(to - from < 8, String(text));
-    const title = await segmentShown(page);
+    const segment = await segmentShown(page);
     await page.getByRole('button', { name: 'Send marks' }).tap();
-    await segmentShown(page, title);
+    await segmentShown(page, segment);
     const [review] = (await recordOf(page, 1)).reviews;
     near(review.marks[0].starts, drawn.starts, 1e-4);
     await close(page);
@@ -291,10 +291,10 @@ test('without a connection a review waits, is said to wait, and is sent when it 
     await enterAsGuest(page);
     await page.waitForLoadState('networkidle');
     await page.context().setOffline(true);
-    const title = await segmentShown(page);
+    const segment = await segmentShown(page);
     await page.getByRole('button', { name: 'No dips here' }).click();
     await page.getByRole('button', { name: '1 waiting to send' }).waitFor();
-    await segmentShown(page, title);
+    await segmentShown(page, segment);
     await page.context().setOffline(false);
     await page.getByRole('button', { name: 'waiting to send' }).waitFor({ state: 'hidden' });
     const [review] = (await recordOf(page, 1)).reviews;
@@ -337,9 +337,9 @@ test('a reload in the middle of a look brings back the same segment with the sam
     await enterAsGuest(page);
     await drag(page, [0.4, 0.3], [0.5, 0.6]);
     await page.getByRole('button', { name: 'A break in the data' }).click();
-    const before = { title: await segmentShown(page), rows: await rows(page) };
+    const before = { segment: await segmentShown(page), rows: await rows(page) };
     await page.reload();
-    assert.equal(await segmentShown(page), before.title);
+    assert.equal(await segmentShown(page), before.segment);
     assert.deepEqual(await rows(page), before.rows);
     assert.equal(await page.getByRole('button', { name: 'A break in the data' }).getAttribute('aria-pressed'), 'true');
     await close(page);
@@ -378,5 +378,23 @@ test('nothing is drawn while nothing changes', async () => {
     const before = await page.evaluate(() => /** @type {any} */ (window).frames_asked);
     await page.waitForTimeout(700);
     assert.equal(await page.evaluate(() => /** @type {any} */ (window).frames_asked), before);
+    await close(page);
+});
+
+test('at night the chart still prints in dark ink', async () => {
+    const page = await it.page({ ...DESKTOP, colorScheme: 'dark' });
+    await enterAsGuest(page);
+    const darkest = () =>
+        page.locator('[data-part="strip-points"]').evaluate((element) => {
+            const canvas = /** @type {HTMLCanvasElement} */ (element);
+            const { data } = /** @type {CanvasRenderingContext2D} */ (canvas.getContext('2d')).getImageData(0, 0, canvas.width, canvas.height);
+            let least = 255;
+            for (let at = 0; at < data.length; at += 4) if (data[at + 3] > 250) least = Math.min(least, data[at]);
+            return least;
+        });
+    assert.ok((await darkest()) > 20);
+    await page.emulateMedia({ media: 'print', colorScheme: 'dark' });
+    await page.waitForFunction(() => matchMedia('print').matches);
+    assert.equal(await darkest(), 0);
     await close(page);
 });

@@ -211,7 +211,7 @@ export async function startMock({ segments = 12, points = 10_800, days = 15, see
             const row = [...people.values()].find(
                 (one) => one.handle === body?.handle && one.passphrase === body?.passphrase && one.passphrase !== null
             );
-            if (!row) throw new Refusal(401, 'wrong_passphrase', 'The handle or the passphrase is wrong.');
+            if (!row) throw new Refusal(401, 'wrong_passphrase', 'Handle and passphrase do not go together.');
             return opened(row);
         }],
         [/^DELETE \/sessions\/current$/, ({ request }) => {
@@ -353,7 +353,7 @@ export async function startMock({ segments = 12, points = 10_800, days = 15, see
                 certainty: at === 1 ? 'unsure' : 'sure',
                 weight,
             }));
-            return { json: { ...row, marks, terms: { looks: 2.1, time: 1.4, snr: 0.8, prior: -1.2 }, verdicts: row.verdicts ?? [], caution: CAUTION } };
+            return { json: { ...row, marked_by: marks, terms: { looks: 2.1, time: 1.4, snr: 0.8, prior: -1.2 }, verdicts: row.verdicts ?? [], caution: CAUTION } };
         }],
         [/^POST \/candidates\/(\d+)\/verdicts$/, ({ request, body, match }) => {
             const person = mustRank(request);

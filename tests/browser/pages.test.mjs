@@ -40,7 +40,7 @@ test('a heading sorts by its column, the other way at the second click, and says
         assert.equal(await head.getAttribute('aria-sort'), state);
         const values = list.candidates.map((/** @type {any} */ row) => row.snr).filter((/** @type {any} */ value) => value !== null);
         assert.deepEqual(values, [...values].sort((a, b) => way * (a - b)));
-        assert.deepEqual(await column(page, 'SNR'), list.candidates.map((/** @type {any} */ row) => (row.snr === null ? '–' : row.snr.toFixed(1))));
+        assert.deepEqual(await column(page, 'SNR'), list.candidates.map((/** @type {any} */ row) => (row.snr === null ? '–' : row.snr.toFixed(1).replace('-', '−'))));
     }
     assert.match(page.url(), /sort=snr/);
     await close(page);
@@ -154,9 +154,9 @@ test('a reviewer is told plainly that the candidates are for the science team', 
 test('the record says what is not known yet, and what the candidates are not', async () => {
     const page = await it.page();
     await enterAsGuest(page);
-    const title = await segmentShown(page);
+    const segment = await segmentShown(page);
     await page.getByRole('button', { name: 'No dips here' }).click();
-    await segmentShown(page, title);
+    await segmentShown(page, segment);
     await recordOf(page, 1);
     await page.goto('/record');
     await page.getByText('No dips', { exact: true }).waitFor();
@@ -183,7 +183,7 @@ test('a guest chooses a passphrase, asks for credit, signs out, and comes back a
     await enter.getByLabel('Handle').fill(handle);
     await enter.getByLabel('Passphrase').fill('wrong tide on monday');
     await enter.getByRole('button', { name: 'Sign in' }).click();
-    await enter.getByRole('alert').getByText(/wrong/).waitFor();
+    await enter.getByRole('alert').getByText(/passphrase/).waitFor();
     await enter.getByLabel('Passphrase').fill('neap tide on monday');
     await enter.getByRole('button', { name: 'Sign in' }).click();
     await segmentShown(page);
@@ -215,7 +215,7 @@ test('whoever leaves is asked first, and is forgotten then', async () => {
     await enter.getByLabel('Handle').fill(handle);
     await enter.getByLabel('Passphrase').fill('low water at noon');
     await enter.getByRole('button', { name: 'Sign in' }).click();
-    await enter.getByRole('alert').getByText(/wrong/).waitFor();
+    await enter.getByRole('alert').getByText(/passphrase/).waitFor();
     await close(page);
 });
 
