@@ -3,7 +3,7 @@ import csv
 import io
 import warnings
 
-from support import DIP, check, skip
+from support import DIP, check, marks_of, skip
 
 
 def nothing_yet(server):
@@ -18,15 +18,16 @@ def nothing_yet(server):
 
 
 def crowd(server):
-    """The dip marked by six, and five chance marks elsewhere, so that there is something to sort."""
+    """The dip marked by eleven, and five chance marks elsewhere, so that there is something to sort."""
     server.review_everything()
     for number in range(5):
         guest = server.guest()
         lease = guest.take()
         starts = lease['segment']['starts'] + 2 + number
-        guest.review(lease, [{'starts': starts, 'ends': starts + 0.2 + 0.05 * number, 'low': 0.99, 'high': 1.0}])
+        chance = {'starts': starts, 'ends': starts + 0.2 + 0.05 * number, 'low': 0.99, 'high': 1.0}
+        guest.review(lease, [*marks_of(guest, lease, number), chance])
         while (lease := guest.take()) is not None:
-            guest.review(lease)
+            guest.review(lease, marks_of(guest, lease, number))
     return server.run_consensus()
 
 

@@ -177,6 +177,15 @@ class Template:
             self.tokens[handle] = run_program('person', '--database', self.path, '--token', handle).strip()
 
 
+def marks_of(client, lease, number):
+    """What somebody who sees the dip marks on their segment: it, or nothing."""
+    flux = client.get(lease['segment']['flux'], headers={'Accept': 'application/json'}).json
+    low, shift = min(flux['flux']), 0.01 * (number % 3)
+    if low >= 1 - DIP[2] / 2:
+        return []
+    return [{'starts': DIP[0] - shift, 'ends': DIP[1] + shift, 'low': low, 'high': 1.001}]
+
+
 class Server:
     """`ebbmark serve` on a copy of the template, on a free loopback port."""
 
@@ -248,14 +257,7 @@ class Server:
             client = self.guest()
             clients.append(client)
             while (lease := client.take()) is not None:
-                segment = lease['segment']
-                flux = client.get(segment['flux'], headers={'Accept': 'application/json'}).json
-                low = min(flux['flux'])
-                marks = []
-                if low < 1 - DIP[2] / 2:
-                    shift = 0.01 * (number % 3)
-                    marks = [{'starts': DIP[0] - shift, 'ends': DIP[1] + shift, 'low': low, 'high': 1.001}]
-                answer = client.review(lease, marks, seconds=5)
+                answer = client.review(lease, marks_of(client, lease, number), seconds=5)
                 assert answer.status == 201, answer
         return clients
 
