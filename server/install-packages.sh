@@ -8,12 +8,15 @@ shift
 missing=
 for wanted in "$@"; do
     package=${wanted#*:}
-    command=${wanted%%:*}
-    if [ "$command" != "$package" ]; then
-        command -v "$command" >/dev/null 2>&1 || missing="$missing $package"
-    elif [ "$(dpkg-query -W -f '${db:Status-Status}' "$package" 2>/dev/null)" != installed ]; then
-        missing="$missing $package"
-    fi
+    case $wanted in
+    *:*)
+        command -v "${wanted%%:*}" >/dev/null 2>&1 || missing="$missing $package"
+        ;;
+    *)
+        [ "$(dpkg-query -W -f '${db:Status-Status}' "$package" 2>/dev/null)" = installed ] ||
+            missing="$missing $package"
+        ;;
+    esac
 done
 [ -n "$missing" ] || exit 0
 if ! command -v apt-get >/dev/null 2>&1; then
