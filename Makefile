@@ -98,7 +98,7 @@ unit-programs: $(unit_programs)
 
 # Drivers of the reference checks and benches: tests/reference/<name>.c and tests/bench/<name>.c link the
 # whole program but its main.
-whole_rooms := $(filter-out cli api,$(ROOMS))
+whole_rooms := $(filter-out cli,$(ROOMS))
 define driver_rule
 $(B)/tests/$(1)/%: tests/$(1)/%.c $(foreach r,$(whole_rooms),$(call archive,$(r)))
 	@mkdir -p $$(@D)

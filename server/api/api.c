@@ -11,6 +11,7 @@
 #include "flux_kept.h"
 #include "metrics.h"
 #include "routes.h"
+#include "segment_bounds.h"
 
 #define COOKIE "ebbmark_session"
 #define FLUX_WORKERS 2
@@ -87,6 +88,7 @@ static void let_go(struct api_server *server)
     flux_kept_free(server->api.flux);
     http_kept_drop(server->api.description);
     metrics_counts_free(server->api.counts);
+    segment_bounds_free(server->api.bounds);
     free(server);
 }
 
@@ -105,12 +107,14 @@ bool api_start(struct campaign *campaign, const struct api_options *options,
     api->flux = flux_kept_new(options->flux_kept_bytes > 0 ? options->flux_kept_bytes
                                                            : API_FLUX_KEPT_BYTES);
     api->counts = metrics_counts_new();
+    api->bounds = segment_bounds_new();
     api->description = http_kept_make(api_description.media_type, api_description.data,
                                       api_description.size, api_description.etag, "no-cache");
-    bool ok = api->flux != NULL && api->counts != NULL && api->description != NULL
-                  ? base_pool_open(&api->workers, FLUX_WORKERS, FLUX_WAITING_MOST, error) &&
-                        serve(server, options, error)
-                  : base_fail(error, BASE_MEMORY, "There is no memory for the server.");
+    bool ok =
+        api->flux != NULL && api->counts != NULL && api->bounds != NULL && api->description != NULL
+            ? base_pool_open(&api->workers, FLUX_WORKERS, FLUX_WAITING_MOST, error) &&
+                  serve(server, options, error)
+            : base_fail(error, BASE_MEMORY, "There is no memory for the server.");
     if (!ok) {
         let_go(server);
         return false;

@@ -7,17 +7,27 @@
 #include <stdlib.h>
 #include <string.h>
 
-bool api_call_begin(struct api_call *call, struct http_exchange *exchange, void *context)
+void api_call_begin_bare(struct api_call *call, struct http_exchange *exchange, void *context)
 {
     struct api *api = context;
     *call = (struct api_call){.api = api,
                               .campaign = api->campaign,
                               .store = api->store,
                               .exchange = exchange,
-                              .arena = http_arena(exchange),
                               .person = http_identity(exchange)->person};
+}
+
+bool api_call_arena(struct api_call *call)
+{
+    call->arena = http_arena(call->exchange);
     return call->arena != NULL ||
            base_fail(&call->error, BASE_MEMORY, "There is no memory to answer a request.");
+}
+
+bool api_call_begin(struct api_call *call, struct http_exchange *exchange, void *context)
+{
+    api_call_begin_bare(call, exchange, context);
+    return api_call_arena(call);
 }
 
 enum http_result api_call_end(struct api_call *call)

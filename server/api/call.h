@@ -14,6 +14,8 @@
 #include "ebbmark/store.h"
 
 struct flux_kept;
+struct metrics_counts;
+struct segment_bounds;
 
 /* What all handlers are given. Set by api_start and left as it is; what it points to guards
  * itself. */
@@ -23,6 +25,7 @@ struct api {
     struct base_pool *workers; /* make flux that is not kept yet */
     struct flux_kept *flux;
     struct http_kept_body *description; /* openapi.json */
+    struct segment_bounds *bounds;
     struct metrics_counts *counts;
     double began_s; /* monotonic */
 };
@@ -42,6 +45,10 @@ struct api_call {
 
 /* The first step of every handler. False when there is no memory for the arena. */
 bool api_call_begin(struct api_call *call, struct http_exchange *exchange, void *context);
+/* The same for a handler that may come to its end without an arena; and the arena, should it need
+ * one after all. */
+void api_call_begin_bare(struct api_call *call, struct http_exchange *exchange, void *context);
+bool api_call_arena(struct api_call *call);
 /* The last step after a failure: answer with it, unless that was done already. */
 enum http_result api_call_end(struct api_call *call);
 

@@ -10,6 +10,7 @@
 #include "call.h"
 #include "ebbmark/clock.h"
 #include "routes.h"
+#include "segment_bounds.h"
 
 #define BODY_MOST 65536
 #define KEY_MOST 200
@@ -20,7 +21,7 @@
 struct taking {
     struct http_exchange *exchange;
     struct store_review_new review;
-    struct store_mark marks[MARKS_MOST];
+    struct store_mark *marks;
 };
 
 /* ---- reading -------------------------------------------------------------------------------- */
@@ -69,6 +70,7 @@ static void read_mark(struct api_call *call, json_t *json, size_t index, struct 
 
 static void read_marks(const struct api_input *input, struct taking *taking)
 {
+    struct api_call *call = input->call;
     json_t *marks = NULL;
     if (!api_input_array(input, "marks", true, &marks))
         return;
@@ -78,8 +80,13 @@ static void read_marks(const struct api_input *input, struct taking *taking)
                         MARKS_MOST, count);
         return;
     }
+    taking->marks = base_arena_take_array(call->arena, count, sizeof *taking->marks);
+    if (taking->marks == NULL && count > 0) {
+        (void)base_fail(&call->error, BASE_MEMORY, "There is no memory to take a review.");
+        return;
+    }
     for (size_t i = 0; i < count; i++)
-        read_mark(input->call, json_array_get(marks, i), i, &taking->marks[i]);
+        read_mark(call, json_array_get(marks, i), i, &taking->marks[i]);
     taking->review.marks = taking->marks;
     taking->review.mark_count = count;
 }
@@ -123,6 +130,19 @@ static bool read_review(struct api_call *call, struct taking *taking, const char
 
 /* ---- checking ------------------------------------------------------------------------------- */
 
+/* Where the segment of a lease begins and ends. */
+static bool find_bounds(struct api_call *call, int64_t id, struct store_segment *out)
+{
+    struct segment_bounds *bounds = call->api->bounds;
+    *out = (struct store_segment){.id = id};
+    if (segment_bounds_find(bounds, id, &out->starts_d, &out->ends_d))
+        return true;
+    if (!store_segment_by_id(call->store, call->arena, id, out, &call->error))
+        return false;
+    segment_bounds_put(bounds, id, out->starts_d, out->ends_d);
+    return true;
+}
+
 static bool check(struct api_call *call, struct taking *taking, const char *text)
 {
     struct store_review_new *review = &taking->review;
@@ -141,7 +161,7 @@ static bool check(struct api_call *call, struct taking *taking, const char *text
     review->late = lease.expired;
     review->submitted_ms = base_clock_unix_ms();
     memcpy(review->lease, lease.nonce, sizeof review->lease);
-    return store_segment_by_id(call->store, call->arena, lease.segment, &segment, &call->error) &&
+    return find_bounds(call, lease.segment, &segment) &&
            campaign_review_check(call->campaign, &segment, taking->marks, review->mark_count,
                                  &call->error);
 }

@@ -203,7 +203,8 @@ static void make_and_answer(void *context)
 
 static enum http_result hand_to_a_worker(struct api_call *call, const struct flux_key *key)
 {
-    struct making *making = base_arena_take(call->arena, sizeof *making);
+    struct making *making =
+        api_call_arena(call) ? base_arena_take(call->arena, sizeof *making) : NULL;
     if (making == NULL) {
         (void)base_fail(&call->error, BASE_MEMORY, "There is no memory to answer a request.");
         return api_call_end(call);
@@ -221,7 +222,8 @@ static enum http_result flux(struct http_exchange *exchange, void *context)
     struct flux_key key;
     int64_t segment;
     struct http_kept_body *body = NULL;
-    if (!api_call_begin(&call, exchange, context) || !read_key(&call, &key))
+    api_call_begin_bare(&call, exchange, context);
+    if (!read_key(&call, &key))
         return api_call_end(&call);
     if (!flux_kept_find(call.api->flux, &key, &segment, &body))
         return hand_to_a_worker(&call, &key);

@@ -10,6 +10,7 @@
 #define HTTP_EXCHANGE_H
 
 #include <microhttpd.h>
+#include <pthread.h>
 #include <stdatomic.h>
 
 #include "connection.h"
@@ -45,6 +46,7 @@ struct http_pair {
 struct http_exchange {
     struct http_server *server;
     struct MHD_Connection *connection;
+    pthread_t reader;             /* the server's thread that reads the connection */
     struct http_connection *line; /* ours beside the library's; the server's threads only */
     double began_s;
     atomic_uint holders; /* the connection, and a handler that answers later */

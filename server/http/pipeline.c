@@ -239,6 +239,7 @@ static enum MHD_Result first_call(struct http_exchange *exchange, struct MHD_Con
                                   const char *method, const char *version)
 {
     exchange->connection = connection;
+    exchange->reader = pthread_self();
     exchange->method = method;
     exchange->is_head = strcmp(method, "HEAD") == 0;
     exchange->phase = HTTP_PHASE_BODY;

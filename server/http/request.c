@@ -132,9 +132,12 @@ const char *http_address(struct http_exchange *exchange)
 
 int http_accept_best(struct http_exchange *exchange, const char *const *types, size_t count)
 {
-    /* The slot, which is ours, says whether the header came; its text is the library's. */
+    /* The slot, which is ours, says whether the header came; its text is the library's, which is
+     * sure to be there only for the thread that reads the connection. */
     const char *accept = exchange->known[HTTP_KNOWN_ACCEPT];
-    return http_accept_pick(accept == NULL ? NULL : http_header(exchange, "Accept"), types, count);
+    if (accept != NULL && !pthread_equal(exchange->reader, pthread_self()))
+        accept = http_header(exchange, "Accept");
+    return http_accept_pick(accept, types, count);
 }
 
 /* "application/json", with no charset or the only one that JSON has. */
