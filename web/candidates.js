@@ -59,13 +59,6 @@ async function fillThumbnail(canvas, row) {
 /** @param {number | null} value @param {(value: number) => string} write */
 const or = (value, write) => (typeof value === 'number' ? write(value) : '–');
 
-/** Value ± error with as many decimals as the error deserves. @param {number | null} value @param {number | null} error @param {number} decimals */
-function withError(value, error, decimals) {
-    if (typeof value !== 'number') return '–';
-    const text = format.fixed(value, decimals);
-    return typeof error === 'number' ? `${text} ± ${format.fixed(error, decimals)}` : text;
-}
-
 /** @param {any} row */
 function rowOf(row) {
     const canvas = el('canvas', { class: 'thumbnail', 'aria-hidden': 'true' });
@@ -88,8 +81,8 @@ function rowOf(row) {
         or(row.mid_time, format.time),
         el('span', {}, format.probability(row.probability), share),
         or(row.snr, (value) => format.fixed(value, 1)),
-        withError(percent(row.depth_ppm), percent(row.depth_error_ppm), 3),
-        withError(row.duration_h, row.duration_error_h, 2),
+        format.withError(percent(row.depth_ppm), percent(row.depth_error_ppm), 3),
+        format.withError(row.duration_h, row.duration_error_h, 2),
         String(row.looks),
         String(row.marks),
         or(row.period_d, (value) => format.fixed(value, 4)),

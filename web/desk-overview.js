@@ -3,7 +3,7 @@ import { part as byPart } from './dom.js';
 import { drawOverview, overviewPlot } from './draw-overview.js';
 import * as format from './format.js';
 import * as geometry from './geometry.js';
-import { paperOf } from './paper.js';
+import { paperOf, unitNow } from './paper.js';
 
 /** @typedef {import('./desk-model.js').DeskModel} DeskModel */
 
@@ -27,11 +27,11 @@ export function makeOverview(model) {
     const place = byPart('overview');
     const canvas = /** @type {HTMLCanvasElement} */ (byPart('overview-canvas'));
     const grip = byPart('window');
-    let [width, height] = [0, 0];
+    let [width, height, unit] = [0, 0, 1];
     /** @type {{kind: 't0' | 't1' | 'move', by: number} | null} */
     let held = null;
 
-    const plot = () => overviewPlot(width, height);
+    const plot = () => overviewPlot(width, height, unit);
     const view = () => ({ ...model.whole, f0: 0, f1: 1 });
     /** @param {PointerEvent} event */
     const timeOf = (event) =>
@@ -98,7 +98,7 @@ export function makeOverview(model) {
     return {
         /** @param {number} across @param {number} tall */
         setSize(across, tall) {
-            [width, height] = [across, tall];
+            [width, height, unit] = [across, tall, unitNow()];
         },
         /** @param {import('./paper.js').Inks} inks */
         draw(inks) {

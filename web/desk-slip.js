@@ -1,6 +1,6 @@
 /** The slip that says what had been put into a control, right after it was sent. */
 import { el, part as byPart } from './dom.js';
-import { drawMark, stripPlot } from './draw-strip.js';
+import { drawMark } from './draw-strip.js';
 import { drawPoints } from './draw-points.js';
 import { fluxFit, heightsFor, timeToX } from './geometry.js';
 import { hatch, inksNow, paperOf } from './paper.js';
@@ -64,7 +64,7 @@ function draw(canvas, control, { sheet, said }) {
     const inks = inksNow();
     const curve = sheet.flux.as_measured;
     const whole = { t0: sheet.lease.segment.starts, t1: sheet.lease.segment.ends };
-    const plot = { ...stripPlot(width, height), left: 2, top: 2, width: width - 4, height: height - 4 };
+    const plot = { left: 2, top: 2, width: width - 4, height: height - 4 };
     const view = { ...whole, ...fluxFit(curve.times, curve.flux, whole) };
     drawPoints(paper, inks, curve, view, plot);
     for (const mark of said.marks)

@@ -3,7 +3,7 @@ import { part as byPart } from './dom.js';
 import { drawCursor, drawMark, drawStripBase, stripPlot } from './draw-strip.js';
 import * as format from './format.js';
 import * as geometry from './geometry.js';
-import { paperOf } from './paper.js';
+import { paperOf, unitNow } from './paper.js';
 
 /** @typedef {import('./desk-model.js').DeskModel} DeskModel */
 /** @typedef {{x: number, y: number}} Place */
@@ -28,9 +28,9 @@ export function makeStrip(model, { spoken }) {
     const pointers = new Map();
     /** @type {Gesture | null} */
     let gesture = null;
-    let [width, height] = [0, 0];
+    let [width, height, unit] = [0, 0, 1];
 
-    const plot = () => stripPlot(width, height);
+    const plot = () => stripPlot(width, height, unit);
     /** @param {PointerEvent | WheelEvent} event @returns {Place} */
     function placeOf(event) {
         const rect = place.getBoundingClientRect();
@@ -213,7 +213,7 @@ export function makeStrip(model, { spoken }) {
         plot,
         /** @param {number} across @param {number} tall */
         setSize(across, tall) {
-            [width, height] = [across, tall];
+            [width, height, unit] = [across, tall, unitNow()];
         },
         /** @param {import('./paper.js').Inks} inks */
         drawBase(inks) {

@@ -184,8 +184,9 @@ function keepUnfinished() {
     });
 }
 
-/** Takes the sizes of the papers, and draws anew. */
+/** Takes the sizes of the papers and of the text, and draws anew. */
 function measure() {
+    inks = inksNow();
     const chart = byPart('strip').getBoundingClientRect();
     const whole = byPart('overview').getBoundingClientRect();
     strip.setSize(chart.width, chart.height);
@@ -209,6 +210,8 @@ function turnTo(which) {
     show(byPart('welcome'), which === 'welcome');
     show(byPart('calm'), which === 'calm');
     show(byPart('sheet'), which === 'sheet' && model.sheet !== null);
+    /* What is to be said of the segment before is said on whatever comes after it. */
+    if (which !== 'welcome') byPart(which === 'calm' ? 'calm' : 'finish').append(byPart('slip'));
 }
 
 /** What the calm sheet's button does. @type {() => void} */

@@ -6,9 +6,9 @@ import { stripPlot } from './draw-strip.js';
 
 /** @typedef {import('./geometry.js').Span} Span */
 
-/** @param {number} width @param {number} height @returns {import('./geometry.js').Plot} */
-export function overviewPlot(width, height) {
-    const { left, width: across } = stripPlot(width, height);
+/** @param {number} width @param {number} height @param {number} unit see Inks.unit @returns {import('./geometry.js').Plot} */
+export function overviewPlot(width, height, unit) {
+    const { left, width: across } = stripPlot(width, height, unit);
     return { left, top: 4, width: across, height: Math.max(height - 8, 1) };
 }
 
@@ -20,14 +20,14 @@ export function overviewPlot(width, height) {
  */
 export function drawOverview(paper, inks, curve, whole, shown, marks) {
     const { pen } = paper;
-    const plot = overviewPlot(paper.width, paper.height);
+    const plot = overviewPlot(paper.width, paper.height, inks.unit);
     const view = { ...whole, ...fluxFit(curve.times, curve.flux, whole) };
     pen.fillStyle = inks.band;
     if (!inks.forced) pen.fillRect(plot.left, plot.top, plot.width, plot.height);
     const from = timeToX(view, plot, shown.t0);
     const to = timeToX(view, plot, shown.t1);
     pen.clearRect(from, plot.top, to - from, plot.height);
-    drawPoints(paper, inks, curve, view, plot);
+    drawPoints(paper, inks, curve, view, plot, { dot: 1.6 * inks.unit });
     pen.strokeStyle = inks.own;
     pen.lineWidth = 1;
     for (const mark of marks) {

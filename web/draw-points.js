@@ -35,7 +35,7 @@ export function drawPoints(paper, inks, curve, view, plot, { dot = 0 } = {}) {
  */
 function drawDots(pen, inks, curve, view, plot, dot, [from, to]) {
     const apart = plot.width / Math.max(to - from, 1);
-    const size = dot || Math.min(4.5, Math.max(2, 1.3 + 1.2 * apart));
+    const size = dot || Math.min(4.5, Math.max(2, 1.3 + 1.2 * apart)) * inks.unit;
     pen.fillStyle = inks.ink;
     pen.beginPath();
     for (let at = from; at <= to; at++) {

@@ -10,11 +10,24 @@ import * as format from './format.js';
 /** @typedef {import('./geometry.js').Plot} Plot */
 /** @typedef {import('./geometry.js').Box} Box */
 
-/** Where the points lie within the paper. @param {number} width @param {number} height @returns {Plot} */
-export function stripPlot(width, height) {
-    const left = width < 560 ? 56 : 72;
-    return { left, top: 12, width: Math.max(width - left - 10, 1), height: Math.max(height - 60, 1) };
+/**
+ * Where the points lie within the paper.
+ * @param {number} width @param {number} height @param {number} unit see Inks.unit
+ * @returns {Plot}
+ */
+export function stripPlot(width, height, unit) {
+    const left = (width < 560 ? 56 : 72) * unit;
+    const below = 48 * unit;
+    return {
+        left,
+        top: 12,
+        width: Math.max(width - left - 10, 1),
+        height: Math.max(height - below - 12, 1),
+    };
 }
+
+/** @param {Inks} inks @param {number} size for text of 16 px @param {string} [style] */
+const fontOf = (inks, size, style = '') => `${style} ${(size * inks.unit).toFixed(1)}px ${inks.font}`;
 
 /** A hairline through the middle of a device pixel. @param {number} at @param {number} scale */
 const crisp = (at, scale) => (Math.floor(at * scale) + 0.5) / scale;
@@ -26,7 +39,7 @@ const crisp = (at, scale) => (Math.floor(at * scale) + 0.5) / scale;
  * @param {{axis: string, gaps: {starts: number, ends: number}[]}} labels
  */
 export function drawStripBase(paper, inks, curve, view, labels) {
-    const plot = stripPlot(paper.width, paper.height);
+    const plot = stripPlot(paper.width, paper.height, inks.unit);
     drawDays(paper, inks, view, plot);
     drawGaps(paper, inks, view, plot, labels.gaps);
     drawFluxAxis(paper, inks, view, plot);
@@ -52,21 +65,21 @@ function drawDays({ pen }, inks, view, plot) {
 /** @param {Paper} paper @param {Inks} inks @param {View} view @param {Plot} plot
  * @param {{starts: number, ends: number}[]} gaps */
 function drawGaps({ pen }, inks, view, plot, gaps) {
-    pen.font = `italic 12px ${inks.font}`;
+    pen.font = fontOf(inks, 12, 'italic');
     pen.textAlign = 'center';
     pen.textBaseline = 'middle';
     pen.fillStyle = inks.ink;
     for (const gap of gaps) {
         const from = Math.max(timeToX(view, plot, gap.starts), plot.left);
         const to = Math.min(timeToX(view, plot, gap.ends), plot.left + plot.width);
-        if (to - from > 56) pen.fillText('no data', (from + to) / 2, plot.top + plot.height / 2);
+        if (to - from > 56 * inks.unit) pen.fillText('no data', (from + to) / 2, plot.top + plot.height / 2);
     }
 }
 
 /** @param {Paper} paper @param {Inks} inks @param {View} view @param {Plot} plot */
 function drawFluxAxis({ pen, scale }, inks, view, plot) {
-    const axis = ticks(view.f0, view.f1, Math.max(2, Math.floor(plot.height / 44)));
-    pen.font = `12px ${inks.font}`;
+    const axis = ticks(view.f0, view.f1, Math.max(3, Math.floor(plot.height / (44 * inks.unit))));
+    pen.font = fontOf(inks, 12);
     pen.textAlign = 'right';
     pen.textBaseline = 'middle';
     pen.lineWidth = 1 / scale;
@@ -81,11 +94,11 @@ function drawFluxAxis({ pen, scale }, inks, view, plot) {
         pen.fillText(format.fixed(value, axis.decimals), plot.left - 8, y);
     }
     pen.save();
-    pen.translate(10, plot.top + plot.height / 2);
+    pen.translate(10 * inks.unit, plot.top + plot.height / 2);
     pen.rotate(-Math.PI / 2);
     pen.textAlign = 'center';
-    pen.font = `italic 12px ${inks.font}`;
-    if (plot.left > 60) pen.fillText('flux, relative', 0, 0);
+    pen.font = fontOf(inks, 12, 'italic');
+    if (plot.left > 60 * inks.unit) pen.fillText('flux, relative', 0, 0);
     pen.restore();
 }
 
@@ -93,8 +106,8 @@ function drawFluxAxis({ pen, scale }, inks, view, plot) {
  * @param {string} title */
 function drawTimeAxis({ pen, scale, height }, inks, view, plot, title) {
     const bottom = plot.top + plot.height;
-    const axis = ticks(view.t0, view.t1, Math.max(2, Math.floor(plot.width / 76)));
-    pen.font = `12px ${inks.font}`;
+    const axis = ticks(view.t0, view.t1, Math.max(2, Math.floor(plot.width / (76 * inks.unit))));
+    pen.font = fontOf(inks, 12);
     pen.textAlign = 'center';
     pen.textBaseline = 'alphabetic';
     pen.lineWidth = 1 / scale;
@@ -106,7 +119,7 @@ function drawTimeAxis({ pen, scale, height }, inks, view, plot, title) {
         pen.moveTo(x, plot.top);
         pen.lineTo(x, bottom + 5);
         pen.stroke();
-        pen.fillText(format.fixed(value, axis.decimals), x, bottom + 20);
+        pen.fillText(format.fixed(value, axis.decimals), x, bottom + 7 + 13 * inks.unit);
     }
     pen.strokeStyle = inks.ink;
     pen.beginPath();
@@ -117,8 +130,8 @@ function drawTimeAxis({ pen, scale, height }, inks, view, plot, title) {
     pen.moveTo(crisp(plot.left, scale), plot.top);
     pen.lineTo(crisp(plot.left, scale), bottom);
     pen.stroke();
-    pen.font = `italic 12px ${inks.font}`;
-    pen.fillText(title, plot.left + plot.width / 2, height - 8);
+    pen.font = fontOf(inks, 12, 'italic');
+    pen.fillText(title, plot.left + plot.width / 2, height - 8 * inks.unit);
 }
 
 /** The usual scatter of a point, as a bar beside the axis.
@@ -138,7 +151,7 @@ function drawNoise({ pen }, inks, noise, view, plot) {
     pen.moveTo(x, y);
     pen.lineTo(x, y + tall);
     pen.stroke();
-    pen.font = `italic 11px ${inks.font}`;
+    pen.font = fontOf(inks, 11, 'italic');
     pen.textAlign = 'left';
     pen.textBaseline = 'middle';
     pen.fillStyle = inks.ink;
@@ -179,7 +192,7 @@ export function drawMark({ pen }, inks, view, plot, mark) {
     pen.setLineDash(mark.sure ? [] : [6, 4]);
     pen.strokeRect(rect.left, rect.top, rect.width, rect.height);
     pen.setLineDash([]);
-    pen.font = `bold 13px ${inks.font}`;
+    pen.font = fontOf(inks, 13, 'bold');
     pen.textAlign = 'left';
     pen.textBaseline = 'alphabetic';
     if (right > plot.left) drawName(pen, inks, mark, Math.max(left, plot.left + 2), rect);

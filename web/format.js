@@ -36,7 +36,18 @@ export const axis = (reference) =>
     `${(reference || 'time').replace(/\s*-\s*(?=\d)/, ` ${MINUS} `)}, days`;
 
 /** @param {number} share 0…1 as whole percent */
-export const percent = (share) => `${fixed(share * 100, 0)} %`;
+export const percent = (share) => `${fixed(share * 100, 0)}\u00a0%`;
+
+/**
+ * Value ± error; an error as large as the value says only that there is no telling.
+ * @param {number | null} value @param {number | null} error @param {number} decimals
+ */
+export function withError(value, error, decimals) {
+    if (typeof value !== 'number') return '–';
+    const text = fixed(value, decimals);
+    if (typeof error !== 'number') return text;
+    return error < Math.abs(value) ? `${text} ± ${fixed(error, decimals)}` : `${text} ± ?`;
+}
 
 /** @param {number} value a probability: never 0 or 1, which would claim too much */
 export function probability(value) {

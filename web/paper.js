@@ -12,6 +12,7 @@
  * @property {string} soft the dense parts of a chart, lighter @property {string} band every other day
  * @property {string} own the reader's marks @property {string} consensus
  * @property {string} ground the paper @property {string} font figures @property {boolean} forced
+ * @property {number} unit what the page's text is larger by than 16 px
  */
 
 const SCALE_MOST = 3;
@@ -35,6 +36,9 @@ export function paperOf(canvas, width, height) {
     return { pen, width, height, scale };
 }
 
+/** The size of the page's text over 16 px, which the charts' figures follow. */
+export const unitNow = () => parseFloat(getComputedStyle(document.documentElement).fontSize) / 16 || 1;
+
 /** The inks in force now, from the page's custom properties. @returns {Inks} */
 export function inksNow() {
     const style = getComputedStyle(document.documentElement);
@@ -50,6 +54,7 @@ export function inksNow() {
         ground: ink('ground'),
         font: ink('figures'),
         forced: matchMedia('(forced-colors: active)').matches,
+        unit: unitNow(),
     };
 }
 

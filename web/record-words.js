@@ -27,7 +27,7 @@ export function skillSentence(skill) {
 /** @param {{starts: number, ends: number, low: number, high: number, certainty: string}} mark */
 export function markSentence(mark) {
     const span = `${format.time(mark.starts)} to ${format.time(mark.ends)}`;
-    const size = `${format.hours(mark.ends - mark.starts)} h, ${format.fixed((mark.high - mark.low) * 100, 2)} % deep`;
+    const size = `${format.hours(mark.ends - mark.starts)}\u00a0h, ${format.fixed((mark.high - mark.low) * 100, 2)}\u00a0% deep`;
     return `${span} (${size}${mark.certainty === 'unsure' ? ', unsure' : ''})`;
 }
 

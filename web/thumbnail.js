@@ -85,8 +85,10 @@ export function drawThumbnail(canvas, curve, place, inks, bars = 0) {
     const wide = Math.max(timeToX(view, plot, place.ends) - left, 2);
     paper.pen.strokeStyle = inks.consensus;
     paper.pen.lineWidth = 1;
-    hatch(paper.pen, { left, top: plot.top, width: wide, height: plot.height }, 6, -1);
+    paper.pen.globalAlpha = 0.45;
+    hatch(paper.pen, { left, top: plot.top, width: wide, height: plot.height }, 8, -1);
+    paper.pen.globalAlpha = 1;
     paper.pen.strokeRect(left, plot.top, wide, plot.height);
-    drawPoints(paper, inks, curve, view, plot, { dot: width > 400 ? 2.5 : 1.5 });
+    drawPoints(paper, inks, curve, view, plot, { dot: width > 400 ? 4 : 2.2 });
     return { paper, plot, view };
 }

@@ -44,14 +44,14 @@ test('skill is one sentence with its interval, or not known yet', () => {
     const text = skillSentence({ hit: rate(0.71, 0.52, 0.85), chance: rate(0.08, 0.02, 0.2) });
     assert.equal(
         text,
-        'By the latest estimate you mark about 71 % of the dips you are shown (90 % interval: 52 to 85 %), and about 8 % of the places that others marked but that are no dip (2 to 20 %).'
+        'By the latest estimate you mark about 71\u00a0% of the dips you are shown (90 % interval: 52 to 85\u00a0%), and about 8\u00a0% of the places that others marked but that are no dip (2 to 20\u00a0%).'
     );
     const unknown = /** @type {any} */ ({ value: null, low: null, high: null });
     assert.match(skillSentence({ hit: unknown, chance: unknown }), /^Not known yet/);
 });
 
 test('a mark reads with its times, length and depth', () => {
-    assert.equal(markSentence({ starts: 1330, ends: 1330.25, low: 0.99, high: 1, certainty: 'unsure' }), '1330.0000 to 1330.2500 (6.00 h, 1.00 % deep, unsure)');
+    assert.equal(markSentence({ starts: 1330, ends: 1330.25, low: 0.99, high: 1, certainty: 'unsure' }), '1330.0000 to 1330.2500 (6.00\u00a0h, 1.00\u00a0% deep, unsure)');
     assert.equal(asideSentence(['break', 'keeps_changing'], true), 'a break in the data; keeps changing; came late, still taken');
 });
 
@@ -110,4 +110,11 @@ test('a thumbnail leaves out what is no number and takes the trend away', () => 
 test('a thumbnail shows the whole candidate and some light beside it', () => {
     const { t0, t1 } = stretchOf({ star: 'RB-0001', starts: 10, ends: 11, mid_time: 10.5 });
     assert.ok(t0 < 7 && t1 > 14);
+});
+
+test('an error as large as its value is not written as if it were known', () => {
+    assert.equal(format.withError(1.37, 0.0249, 2), '1.37 ± 0.02');
+    assert.equal(format.withError(1.37, 732235, 2), '1.37 ± ?');
+    assert.equal(format.withError(1.37, null, 2), '1.37');
+    assert.equal(format.withError(null, 1, 2), '–');
 });
