@@ -79,7 +79,10 @@ async function problemOf(response) {
     const sentence =
         [said?.detail, said?.title].find((text) => typeof text === 'string' && text !== '') ??
         `The server answered with status ${response.status}.`;
-    const kind = String(said?.type ?? '').split('/').at(-1) ?? '';
+    const kind =
+        String(said?.type ?? '')
+            .split('/')
+            .at(-1) ?? '';
     return new Problem(response.status, kind, sentence, fieldsOf(said?.fields), wait);
 }
 

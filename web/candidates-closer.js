@@ -8,7 +8,10 @@ import { curveOf, drawThumbnail, stretchOf } from './thumbnail.js';
 
 const BAR = 9;
 const BARS_MOST = 15;
-/** What the flags mean; one that is not listed is shown by its name. @type {Record<string, string>} */
+/**
+ * What the flags mean; one that is not listed is shown by its name.
+ * @type {Record<string, string>}
+ */
 const FLAGS = {
     near_gap: 'An edge of the dip lies within half its duration of a gap.',
     little_data: 'Less than half of the dip is covered by data.',
@@ -20,11 +23,15 @@ const FLAGS = {
 
 /** @param {string | null} flags names with blanks between */
 export const flagSentences = (flags) =>
-    (flags ?? '').split(' ').filter((name) => name !== '').map((name) => FLAGS[name] ?? name);
+    (flags ?? '')
+        .split(' ')
+        .filter((name) => name !== '')
+        .map((name) => FLAGS[name] ?? name);
 
 /**
  * Why the probability is what it is: the parts of the log-odds.
- * @param {{looks: number | null, time: number | null, snr: number | null, prior: number | null}} terms
+ * @param {{looks: number | null, time: number | null, snr: number | null, prior: number | null}}
+ * terms
  * @param {number | null} logOdds
  */
 export function termsSentence(terms, logOdds) {
@@ -49,7 +56,8 @@ const signed = (value) => (value >= 0.005 ? '+' : '') + format.fixed(value, 2);
 /** @param {any} mark */
 function markItem(mark) {
     const who = mark.handle ?? `reviewer ${mark.person}`;
-    const weight = typeof mark.weight === 'number' ? `, weight ${format.fixed(mark.weight, 2)}` : '';
+    const weight =
+        typeof mark.weight === 'number' ? `, weight ${format.fixed(mark.weight, 2)}` : '';
     const span = `${format.time(mark.starts)} to ${format.time(mark.ends)}`;
     return el('li', {}, `${who}: ${span}, ${mark.certainty}${weight}`);
 }
@@ -57,7 +65,12 @@ function markItem(mark) {
 /** @param {any} verdict */
 function verdictItem(verdict) {
     const note = verdict.note ? `: ${verdict.note}` : '';
-    return el('li', {}, `${verdict.verdict} by ${verdict.handle ?? 'somebody who left'}, ${format.moment(verdict.given)}${note}`);
+    return el(
+        'li',
+        {},
+        `${verdict.verdict} by ${verdict.handle ?? 'somebody who left'}, ` +
+            `${format.moment(verdict.given)}${note}`
+    );
 }
 
 /** @param {{onVerdict: () => void}} options */
@@ -69,13 +82,17 @@ export function makeCloser({ onVerdict }) {
 
     for (const button of dialog.querySelectorAll('button[data-verdict]'))
         button.addEventListener('click', () =>
-            atWork(/** @type {HTMLButtonElement} */ (button), byPart('verdict-trouble'), async () => {
-                const verdict = /** @type {HTMLElement} */ (button).dataset.verdict ?? '';
-                await api.giveVerdict(shown, { verdict, note: note.value.trim() });
-                note.value = '';
-                await fill(shown);
-                onVerdict();
-            })
+            atWork(
+                /** @type {HTMLButtonElement} */ (button),
+                byPart('verdict-trouble'),
+                async () => {
+                    const verdict = /** @type {HTMLElement} */ (button).dataset.verdict ?? '';
+                    await api.giveVerdict(shown, { verdict, note: note.value.trim() });
+                    note.value = '';
+                    await fill(shown);
+                    onVerdict();
+                }
+            )
         );
     byPart('verdict-form').addEventListener('submit', (event) => event.preventDefault());
 
@@ -88,12 +105,14 @@ export function makeCloser({ onVerdict }) {
         const { paper, plot, view } = drawn;
         const inks = inksNow();
         paper.pen.fillStyle = inks.consensus;
-        one.marked_by.slice(0, BARS_MOST).forEach((/** @type {any} */ mark, /** @type {number} */ at) => {
-            const left = timeToX(view, plot, mark.starts);
-            const wide = Math.max(timeToX(view, plot, mark.ends) - left, 2);
-            paper.pen.globalAlpha = 0.35 + 0.65 * Math.min(1, Math.max(0, mark.weight ?? 0));
-            paper.pen.fillRect(left, plot.top + plot.height + 6 + at * BAR, wide, BAR - 3);
-        });
+        one.marked_by
+            .slice(0, BARS_MOST)
+            .forEach((/** @type {any} */ mark, /** @type {number} */ at) => {
+                const left = timeToX(view, plot, mark.starts);
+                const wide = Math.max(timeToX(view, plot, mark.ends) - left, 2);
+                paper.pen.globalAlpha = 0.35 + 0.65 * Math.min(1, Math.max(0, mark.weight ?? 0));
+                paper.pen.fillRect(left, plot.top + plot.height + 6 + at * BAR, wide, BAR - 3);
+            });
         paper.pen.globalAlpha = 1;
     }
 
@@ -105,7 +124,9 @@ export function makeCloser({ onVerdict }) {
         say(byPart('closer-caution'), one.caution);
         say(
             byPart('closer-axis'),
-            `Days ${format.fixed(span.t0, 2)} to ${format.fixed(span.t1, 2)}, ${one.time_reference.replace(' - ', ' \u2212 ')}; trend removed. Hatched: the candidate. Bars: each reviewer’s mark, stronger for more weight.`
+            `Days ${format.fixed(span.t0, 2)} to ${format.fixed(span.t1, 2)}, ` +
+                `${one.time_reference.replace(' - ', ' \u2212 ')}; trend removed. Hatched: the ` +
+                'candidate. Bars: each reviewer’s mark, stronger for more weight.'
         );
         const why = [
             `Probability ${format.probability(one.probability)}.`,
@@ -115,7 +136,9 @@ export function makeCloser({ onVerdict }) {
         say(byPart('closer-why'), why.filter((text) => text !== '').join(' '));
         byPart('closer-marks').replaceChildren(...one.marked_by.map(markItem));
         const verdicts = one.verdicts.map(verdictItem);
-        byPart('closer-verdicts').replaceChildren(...(verdicts.length > 0 ? verdicts : [el('li', {}, 'None yet.')]));
+        byPart('closer-verdicts').replaceChildren(
+            ...(verdicts.length > 0 ? verdicts : [el('li', {}, 'None yet.')])
+        );
         for (const button of dialog.querySelectorAll('button[data-verdict]'))
             button.setAttribute(
                 'aria-pressed',

@@ -8,7 +8,14 @@ import { query } from './api.js';
  */
 
 export const STANDARD_SORT = '-probability';
-const NAMES = /** @type {const} */ (['min_probability', 'star', 'batch', 'verdict', 'sort', 'cursor']);
+const NAMES = /** @type {const} */ ([
+    'min_probability',
+    'star',
+    'batch',
+    'verdict',
+    'sort',
+    'cursor',
+]);
 
 /** Columns that the list can be sorted by, and which way a first click sorts. */
 export const SORTS = /** @type {const} */ ({

@@ -1,4 +1,7 @@
-/** Candidates: the ranked list, its filters and order in the address, and the consensus run behind it. */
+/**
+ * Candidates: the ranked list, its filters and order in the address, and the consensus run behind
+ * it.
+ */
 import * as api from './api.js';
 import { makeCloser } from './candidates-closer.js';
 import * as questions from './candidates-question.js';
@@ -72,7 +75,8 @@ function rowOf(row) {
     open.setAttribute('aria-label', `Candidate ${row.candidate}, a closer look`);
     const share = el('span', { class: 'share', 'aria-hidden': 'true' });
     share.style.setProperty('--share', String(row.probability));
-    const percent = (/** @type {number | null} */ ppm) => (typeof ppm === 'number' ? ppm / 1e4 : null);
+    const percent = (/** @type {number | null} */ ppm) =>
+        typeof ppm === 'number' ? ppm / 1e4 : null;
     /** @type {(Node | string)[]} */
     const cells = [
         canvas,
@@ -111,13 +115,21 @@ function rowOf(row) {
 function fillHeads() {
     byPart('heads').replaceChildren(
         ...COLUMNS.map(({ label, sort, text }) => {
-            const head = el('th', { role: 'columnheader', scope: 'col', class: text ? 'text' : '' });
+            const head = el('th', {
+                role: 'columnheader',
+                scope: 'col',
+                class: text ? 'text' : '',
+            });
             if (!sort) head.append(label);
             else {
                 const state = questions.sortState(question.sort, sort);
                 head.setAttribute('aria-sort', state);
                 const arrow = { ascending: '↑', descending: '↓', none: '' }[state];
-                const button = el('button', { type: 'button', class: 'plain heading', 'data-sort': sort }, label);
+                const button = el(
+                    'button',
+                    { type: 'button', class: 'plain heading', 'data-sort': sort },
+                    label
+                );
                 button.append(el('span', { 'aria-hidden': 'true', class: 'arrow' }, arrow));
                 button.addEventListener('click', () => sortBy(sort));
                 head.append(button);
@@ -135,8 +147,16 @@ function sortBy(sort) {
 
 function fillFilters() {
     const form = /** @type {HTMLFormElement} */ (byPart('filters'));
-    for (const name of /** @type {const} */ (['min_probability', 'star', 'batch', 'verdict', 'sort'])) {
-        const field = /** @type {HTMLInputElement | HTMLSelectElement} */ (form.elements.namedItem(name));
+    for (const name of /** @type {const} */ ([
+        'min_probability',
+        'star',
+        'batch',
+        'verdict',
+        'sort',
+    ])) {
+        const field = /** @type {HTMLInputElement | HTMLSelectElement} */ (
+            form.elements.namedItem(name)
+        );
         field.value = question[name];
     }
 }
@@ -147,7 +167,8 @@ function fillRun(run) {
         byPart('run'),
         run === null
             ? 'No consensus run yet, so there is no list.'
-            : `Run ${run.run} over ${format.counted(run.reviews, 'review')}, finished ${run.finished ? format.moment(run.finished) : 'not yet'}.`
+            : `Run ${run.run} over ${format.counted(run.reviews, 'review')}, finished ` +
+                  `${run.finished ? format.moment(run.finished) : 'not yet'}.`
     );
 }
 
@@ -162,20 +183,31 @@ function fillList(list) {
     const some = list.candidates.length > 0;
     show(byPart('table'), some);
     show(byPart('none'), !some);
-    say(byPart('none'), list.run === null ? 'Once reviews have come in, run the consensus.' : 'No candidate is like this.');
+    say(
+        byPart('none'),
+        list.run === null
+            ? 'Once reviews have come in, run the consensus.'
+            : 'No candidate is like this.'
+    );
     fillPages(list.next);
     const csv = /** @type {HTMLAnchorElement} */ (byPart('csv'));
     csv.href = questions.tableOf(question, 'csv');
 }
 
-/** The pages before this one, as their cursors; kept with each entry of the browser's history. @returns {string[]} */
+/**
+ * The pages before this one, as their cursors; kept with each entry of the browser's history.
+ * @returns {string[]}
+ */
 const before = () => history.state?.before ?? [];
 
 /** @param {string | null} next */
 function fillPages(next) {
     link('first', question.cursor === '' ? null : { ...question, cursor: '' });
     const last = before().at(-1);
-    link('back', question.cursor === '' || last === undefined ? null : { ...question, cursor: last });
+    link(
+        'back',
+        question.cursor === '' || last === undefined ? null : { ...question, cursor: last }
+    );
     link('next', next === null ? null : { ...question, cursor: next });
 }
 
@@ -251,7 +283,10 @@ function askWho() {
     fillMasthead(null);
     show(byPart('list'), false);
     show(byPart('join'), true);
-    joinSheet(byPart('join'), { onPerson: open, again: 'The candidates are for the science team. Sign in to see them.' });
+    joinSheet(byPart('join'), {
+        onPerson: open,
+        again: 'The candidates are for the science team. Sign in to see them.',
+    });
 }
 
 /** @param {api.Person} person */
@@ -263,7 +298,8 @@ function open(person) {
         return;
     }
     byPart('trouble').replaceChildren(
-        'The list of candidates is for the science team, and you are here as a reviewer. What your marks became part of stands under ',
+        'The list of candidates is for the science team, and you are here as a reviewer. What ' +
+            'your marks became part of stands under ',
         el('a', { href: '/record' }, 'My record'),
         '.'
     );
@@ -291,8 +327,14 @@ function wire() {
         byPart(name).addEventListener('click', (event) => {
             if (event.ctrlKey || event.metaKey || event.shiftKey) return;
             event.preventDefault();
-            const to = questions.questionOf(new URL(/** @type {HTMLAnchorElement} */ (byPart(name)).href).search);
-            const pages = { first: [], back: before().slice(0, -1), next: [...before(), question.cursor] };
+            const to = questions.questionOf(
+                new URL(/** @type {HTMLAnchorElement} */ (byPart(name)).href).search
+            );
+            const pages = {
+                first: [],
+                back: before().slice(0, -1),
+                next: [...before(), question.cursor],
+            };
             go(to, pages[/** @type {'first' | 'back' | 'next'} */ (name)]);
             byPart('total').scrollIntoView();
         });
@@ -304,7 +346,8 @@ function wire() {
     run.addEventListener('click', () => atWork(run, byPart('run-note'), runNow));
     watchInks(() => {
         for (const [canvas, row] of unseen)
-            if (canvas.isConnected) void fillThumbnail(/** @type {HTMLCanvasElement} */ (canvas), row);
+            if (canvas.isConnected)
+                void fillThumbnail(/** @type {HTMLCanvasElement} */ (canvas), row);
     });
 }
 

@@ -1,5 +1,6 @@
 /**
- * Thins a light curve for drawing: for each column of the paper its lowest and highest flux, so that
+ * Thins a light curve for drawing: for each column of the paper its lowest and highest flux, so
+ * that
  * no dip and no spike is lost however many points fall on a pixel, and the band that most of its
  * points lie in. Pure.
  */

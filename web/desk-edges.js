@@ -1,5 +1,6 @@
 /**
- * The edges of the marks as sliders above the chart, for keyboards and screen readers; a pointer goes
+ * The edges of the marks as sliders above the chart, for keyboards and screen readers; a pointer
+ * goes
  * through them to the chart.
  */
 import { el, part as byPart } from './dom.js';
@@ -40,7 +41,11 @@ export function makeEdges(model, { plot, onKey }) {
         return slider;
     }
 
-    /** Brings the edge into the window and under the loupe. @param {number} id @param {'starts' | 'ends'} edge */
+    /**
+     * Brings the edge into the window and under the loupe.
+     * @param {number} id
+     * @param {'starts' | 'ends'} edge
+     */
     function follow(id, edge) {
         const mark = model.work.said.marks.find((one) => one.id === id);
         if (!mark) return;
@@ -60,7 +65,8 @@ export function makeEdges(model, { plot, onKey }) {
                     wanted.add(key);
                     const slider = sliders.get(key) ?? make(mark.id, edge);
                     sliders.set(key, slider);
-                    const next = before === null ? place.firstElementChild : before.nextElementSibling;
+                    const next =
+                        before === null ? place.firstElementChild : before.nextElementSibling;
                     if (next !== slider) place.insertBefore(slider, next);
                     before = slider;
                     label(slider, model.nameOf(mark), edge, mark[edge]);
@@ -89,7 +95,12 @@ export function makeEdges(model, { plot, onKey }) {
         },
     };
 
-    /** @param {HTMLElement} slider @param {string} name @param {'starts' | 'ends'} edge @param {number} at */
+    /**
+     * @param {HTMLElement} slider
+     * @param {string} name
+     * @param {'starts' | 'ends'} edge
+     * @param {number} at
+     */
     function label(slider, name, edge, at) {
         slider.setAttribute('aria-label', `Mark ${name} ${edge}`);
         slider.setAttribute('aria-valuemin', String(model.limits.starts));

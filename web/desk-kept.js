@@ -1,10 +1,13 @@
 /**
- * The unfinished segment, kept for this tab: a reload shows the same one with the same marks, instead
+ * The unfinished segment, kept for this tab: a reload shows the same one with the same marks,
+ * instead
  * of taking another from the heap.
  */
 
 /** @typedef {import('./api.js').Lease} Lease */
-/** @typedef {{person: number, lease: Lease, said: import('./marks.js').Said, seconds: number}} Kept */
+/**
+ * @typedef {{person: number, lease: Lease, said: import('./marks.js').Said, seconds: number}} Kept
+ */
 
 const NAME = 'ebbmark.unfinished';
 

@@ -29,7 +29,8 @@ export function makeKeys(model, acts) {
         const done = model.beginOrEnd();
         const mark = model.chosen;
         if (done === 'begun') acts.spoken(`Mark begun at day ${format.time(model.cursor.time)}.`);
-        else if (done === 'full') acts.spoken(`There may be at most ${model.limits.marksMost} marks.`);
+        else if (done === 'full')
+            acts.spoken(`There may be at most ${model.limits.marksMost} marks.`);
         else if (mark) {
             const length = format.hours(mark.ends - mark.starts);
             acts.spoken(`Mark ${model.nameOf(mark)} made, ${length} hours long.`);
@@ -107,7 +108,8 @@ export function makeKeys(model, acts) {
 
     /** @param {EventTarget | null} target does it take text itself? */
     const takesText = (target) =>
-        target instanceof HTMLElement && target.matches('input:not([type="checkbox"]), textarea, select');
+        target instanceof HTMLElement &&
+        target.matches('input:not([type="checkbox"]), textarea, select');
 
     document.addEventListener('keydown', (event) => {
         if (document.querySelector('dialog[open]') !== null) return;

@@ -154,8 +154,7 @@ export class DeskModel {
     setFluxView(fluxView) {
         this.fluxView = fluxView;
         this.draft = null;
-        if (!this.fit)
-            this.range = geometry.fluxFit(this.curve.times, this.curve.flux, this.whole);
+        if (!this.fit) this.range = geometry.fluxFit(this.curve.times, this.curve.flux, this.whole);
         this.#refit();
         this.#changed('window');
     }
@@ -166,7 +165,13 @@ export class DeskModel {
     #ratio(box) {
         if (this.sheet === null || this.fluxView === 'as_measured') return 1;
         const { as_measured: measured, trend_removed: removed } = this.sheet.flux;
-        return geometry.levelRatio(measured.times, measured.flux, removed.flux, box.starts, box.ends);
+        return geometry.levelRatio(
+            measured.times,
+            measured.flux,
+            removed.flux,
+            box.starts,
+            box.ends
+        );
     }
 
     /** A mark's box in the flux shown. @param {Mark} mark @returns {Box} */
@@ -246,7 +251,11 @@ export class DeskModel {
     #boxByTimes(one, other) {
         const starts = Math.min(one, other);
         const ends = Math.max(one, other);
-        return { starts, ends, ...geometry.heightsFor(this.curve.times, this.curve.flux, starts, ends) };
+        return {
+            starts,
+            ends,
+            ...geometry.heightsFor(this.curve.times, this.curve.flux, starts, ends),
+        };
     }
 
     /** @param {Box | null} box in the flux shown */
@@ -255,7 +264,10 @@ export class DeskModel {
         this.#changed('cursor');
     }
 
-    /** Adds a box drawn on the view shown. False when there are too many already. @param {Box} box */
+    /**
+     * Adds a box drawn on the view shown. False when there are too many already.
+     * @param {Box} box
+     */
     add(box) {
         const before = this.work.said.marks.length;
         const fit = marks.boxFit(box, this.limits);
@@ -265,13 +277,23 @@ export class DeskModel {
         return this.work.said.marks.length > before;
     }
 
-    /** Adds a mark by its times, its heights taken from the data. @param {number} one @param {number} other */
+    /**
+     * Adds a mark by its times, its heights taken from the data.
+     * @param {number} one
+     * @param {number} other
+     */
     addByTimes(one, other) {
-        const { starts, ends } = marks.boxFit({ starts: one, ends: other, low: 1, high: 1 }, this.limits);
+        const { starts, ends } = marks.boxFit(
+            { starts: one, ends: other, low: 1, high: 1 },
+            this.limits
+        );
         return this.add(this.#boxByTimes(starts, ends));
     }
 
-    /** Starts a mark at the cursor, or ends the one that was started. @returns {'begun' | 'added' | 'full'} */
+    /**
+     * Starts a mark at the cursor, or ends the one that was started.
+     * @returns {'begun' | 'added' | 'full'}
+     */
     beginOrEnd() {
         const { time } = this.cursor;
         if (this.begun === null) {
@@ -303,12 +325,21 @@ export class DeskModel {
         this.#setWork(marks.markChange(this.work, id, patch, this.limits, `drag ${id}`));
     }
 
-    /** @param {number} id @param {Partial<Box & {certainty: marks.Certainty}>} patch @param {string} [step] */
+    /**
+     * @param {number} id
+     * @param {Partial<Box & {certainty: marks.Certainty}>} patch
+     * @param {string} [step]
+     */
     change(id, patch, step) {
         this.#setWork(marks.markChange(this.work, id, patch, this.limits, step));
     }
 
-    /** Moves one edge in time. @param {number} id @param {'starts' | 'ends'} edge @param {number} days */
+    /**
+     * Moves one edge in time.
+     * @param {number} id
+     * @param {'starts' | 'ends'} edge
+     * @param {number} days
+     */
     nudge(id, edge, days) {
         const mark = this.work.said.marks.find((one) => one.id === id);
         if (!mark) return;

@@ -47,7 +47,8 @@ export function makeRows(model) {
     const empty = el(
         'p',
         { class: 'empty' },
-        'None yet. Drag on the chart to draw a box around a dip; if there is none, say “No dips here”.'
+        'None yet. Drag on the chart to draw a box around a dip; if there is none, say “No dips ' +
+            'here”.'
     );
     const body = el('tbody');
     const unitButton = el('button', { type: 'button', class: 'plain unit' });
@@ -113,7 +114,12 @@ export function makeRows(model) {
         fill();
     }
 
-    /** One step of an arrow key in a field. @param {Mark} mark @param {Field} field @param {number} way */
+    /**
+     * One step of an arrow key in a field.
+     * @param {Mark} mark
+     * @param {Field} field
+     * @param {number} way
+     */
     function stepField(mark, field, way) {
         const days = way * model.nudgeStep(false);
         if (field === 'depth') {
@@ -155,10 +161,15 @@ export function makeRows(model) {
             class: 'plain certainty',
             onclick: () => {
                 const mark = markOf(id);
-                if (mark) model.change(id, { certainty: mark.certainty === 'sure' ? 'unsure' : 'sure' });
+                if (mark)
+                    model.change(id, { certainty: mark.certainty === 'sure' ? 'unsure' : 'sure' });
             },
         });
-        const drop = el('button', { type: 'button', class: 'plain drop', onclick: () => remove(id) }, 'Delete');
+        const drop = el(
+            'button',
+            { type: 'button', class: 'plain drop', onclick: () => remove(id) },
+            'Delete'
+        );
         const row = el('tr', {}, head);
         const labels = ['Starts', 'Ends', 'Length, h', 'Depth'];
         inputs.forEach((input, at) => row.append(el('td', { 'data-label': labels[at] }, input)));
@@ -173,15 +184,24 @@ export function makeRows(model) {
                 row.classList.toggle('chosen', mark.id === model.work.chosen);
                 FIELDS.forEach((field, at) => {
                     const [input, text] = [inputs[at], textOf(mark, field)];
-                    const label = field === 'depth' ? `depth, ${unit}` : field === 'length' ? 'length, hours' : field;
+                    const label =
+                        field === 'depth'
+                            ? `depth, ${unit}`
+                            : field === 'length'
+                              ? 'length, hours'
+                              : field;
                     input.setAttribute('aria-label', `Mark ${name} ${label}`);
-                    const editing = document.activeElement === input && input.hasAttribute('aria-invalid');
+                    const editing =
+                        document.activeElement === input && input.hasAttribute('aria-invalid');
                     if (!editing && input.value !== text) input.value = text;
                 });
                 certainty.textContent = mark.certainty;
                 certainty.dataset.certainty = mark.certainty;
                 const other = mark.certainty === 'sure' ? 'unsure' : 'sure';
-                certainty.setAttribute('aria-label', `Mark ${name} is ${mark.certainty}; make it ${other}`);
+                certainty.setAttribute(
+                    'aria-label',
+                    `Mark ${name} is ${mark.certainty}; make it ${other}`
+                );
                 drop.setAttribute('aria-label', `Delete mark ${name}`);
             },
         };
@@ -216,7 +236,11 @@ export function makeRows(model) {
         if (marks.length === 0) note.textContent = '';
     }
 
-    /** Puts a row in its place without taking the focus from it. @param {HTMLElement} row @param {number} at */
+    /**
+     * Puts a row in its place without taking the focus from it.
+     * @param {HTMLElement} row
+     * @param {number} at
+     */
     function moveTo(row, at) {
         const focused = row.contains(document.activeElement) ? document.activeElement : null;
         body.insertBefore(row, body.children[at] ?? null);

@@ -15,7 +15,9 @@ import * as format from './format.js';
  */
 export function controlSentence(control, marks) {
     if (control.kind === 'inverted') {
-        const first = 'The segment before this one was a control: its flux had been turned upside down, so that no real dip was in it.';
+        const first =
+            'The segment before this one was a control: its flux had been turned upside down, ' +
+            'so that no real dip was in it.';
         const drawn = marks === 1 ? 'Your mark is' : 'Your marks are';
         return marks === 0
             ? `${first} You said that there was none.`
@@ -24,15 +26,23 @@ export function controlSentence(control, marks) {
     const dips = control.dips;
     const places = dips.map(
         (dip) =>
-            `from day ${format.time(dip.starts)} to ${format.time(dip.ends)} (${dip.found ? 'you found it' : 'you did not mark it'})`
+            `from day ${format.time(dip.starts)} to ${format.time(dip.ends)} ` +
+            `(${dip.found ? 'you found it' : 'you did not mark it'})`
     );
-    const put = dips.length === 1 ? 'a model dip had been put into it' : `${dips.length} model dips had been put into it`;
+    const put =
+        dips.length === 1
+            ? 'a model dip had been put into it'
+            : `${dips.length} model dips had been put into it`;
     return `The segment before this one was a control: ${put}, ${places.join('; ')}.`;
 }
 
 /** @param {HTMLElement} slip @param {string} text @param {HTMLElement[]} more */
 function fill(slip, text, more) {
-    const close = el('button', { type: 'button', class: 'plain close', 'aria-label': 'Put the slip away' }, 'Close');
+    const close = el(
+        'button',
+        { type: 'button', class: 'plain close', 'aria-label': 'Put the slip away' },
+        'Close'
+    );
     close.addEventListener('click', () => {
         slip.hidden = true;
     });
@@ -55,7 +65,9 @@ export function showControl(control, sent) {
     draw(canvas, control, sent);
 }
 
-/** The segment small, the reviewer's marks in ochre, what was put there in teal with the other slant.
+/**
+ * The segment small, the reviewer's marks in ochre, what was put there in teal with the other
+ * slant.
  * @param {HTMLCanvasElement} canvas @param {Control} control @param {Sent} sent */
 function draw(canvas, control, { sheet, said }) {
     const { width, height } = canvas.getBoundingClientRect();
@@ -68,7 +80,12 @@ function draw(canvas, control, { sheet, said }) {
     const view = { ...whole, ...fluxFit(curve.times, curve.flux, whole) };
     drawPoints(paper, inks, curve, view, plot);
     for (const mark of said.marks)
-        drawMark(paper, inks, view, plot, { box: mark, name: '', sure: mark.certainty === 'sure', chosen: false });
+        drawMark(paper, inks, view, plot, {
+            box: mark,
+            name: '',
+            sure: mark.certainty === 'sure',
+            chosen: false,
+        });
     paper.pen.strokeStyle = inks.consensus;
     paper.pen.lineWidth = 1.5;
     for (const dip of control.dips) {

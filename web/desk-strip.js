@@ -10,7 +10,8 @@ import { paperOf, unitNow } from './paper.js';
 /**
  * What the pointer is doing. `from` is where it went down.
  * @typedef {{kind: 'draw', from: Place, moved: boolean}
- *   | {kind: 'mark', from: Place, id: number, part: geometry.Part, box: geometry.Box, moved: boolean}
+ *   | {kind: 'mark', from: Place, id: number, part: geometry.Part, box: geometry.Box, moved:
+ * boolean}
  *   | {kind: 'pan', from: Place, span: geometry.Span}
  *   | {kind: 'pinch', span: geometry.Span, shares: [number, number]}
  *   | {kind: 'spent'}} Gesture
@@ -127,7 +128,9 @@ export function makeStrip(model, { spoken }) {
     /** @param {Place} at @param {PointerEvent} event */
     function hover(at, event) {
         model.setCursor(timeAt(at.x), fluxAt(at.y));
-        place.dataset.under = nameOfPart(event.shiftKey ? null : markUnder(at, event)?.part ?? null);
+        place.dataset.under = nameOfPart(
+            event.shiftKey ? null : (markUnder(at, event)?.part ?? null)
+        );
     }
 
     /**
@@ -147,7 +150,11 @@ export function makeStrip(model, { spoken }) {
         }
     }
 
-    /** The box drawn so far; one drawn flat takes its heights from the data. @param {Place} from @param {Place} to */
+    /**
+     * The box drawn so far; one drawn flat takes its heights from the data.
+     * @param {Place} from
+     * @param {Place} to
+     */
     function draftTo(from, to) {
         const bounds = { t0: model.limits.starts, t1: model.limits.ends };
         const corner = (/** @type {Place} */ at) => ({ time: timeAt(at.x), flux: fluxAt(at.y) });
@@ -178,7 +185,10 @@ export function makeStrip(model, { spoken }) {
             return;
         }
         const mark = model.chosen;
-        if (mark) spoken(`Mark ${model.nameOf(mark)} drawn, ${format.hours(mark.ends - mark.starts)} hours.`);
+        if (mark)
+            spoken(
+                `Mark ${model.nameOf(mark)} drawn, ${format.hours(mark.ends - mark.starts)} hours.`
+            );
     }
 
     /** @param {PointerEvent} event */
@@ -263,7 +273,6 @@ export function shownMarks(model) {
         chosen: mark.id === model.work.chosen,
     }));
     all.sort((a, b) => Number(a.chosen) - Number(b.chosen));
-    if (model.draft !== null)
-        all.push({ box: model.draft, name: '', sure: true, chosen: false });
+    if (model.draft !== null) all.push({ box: model.draft, name: '', sure: true, chosen: false });
     return all;
 }

@@ -31,7 +31,10 @@ const AGAIN_MS = 10_000;
 /** @type {api.Person | null} */
 let person = null;
 let inks = inksNow();
-/** Segments sent but not answered yet, to show a control with. @type {Map<string, import('./desk-slip.js').Sent>} */
+/**
+ * Segments sent but not answered yet, to show a control with.
+ * @type {Map<string, import('./desk-slip.js').Sent>}
+ */
 const sent = new Map();
 /** @type {number | undefined} */
 let againTimer;
@@ -133,7 +136,8 @@ function fillSheet() {
     byPart('sheet').dataset.segment = segment.id;
     say(
         byPart('subtitle'),
-        `${format.counted(model.curve.times.length, 'point')} · ${format.axis(segment.time_reference)}`
+        `${format.counted(model.curve.times.length, 'point')} · ` +
+            `${format.axis(segment.time_reference)}`
     );
     say(byPart('trouble'), '');
     byPart('strip').setAttribute('aria-label', `Flux against time, ${span.toLowerCase()}`);
@@ -160,7 +164,11 @@ function fillFinish() {
     setOff(byPart('redo'), model.work.future.length === 0);
 }
 
-/** Out of use, but still there for the keyboard. @param {HTMLElement} button @param {boolean} off */
+/**
+ * Out of use, but still there for the keyboard.
+ * @param {HTMLElement} button
+ * @param {boolean} off
+ */
 function setOff(button, off) {
     if (off) button.setAttribute('aria-disabled', 'true');
     else button.removeAttribute('aria-disabled');
@@ -205,7 +213,10 @@ function spoken(text) {
 
 // ---- going from segment to segment ----
 
-/** What is on the page: the welcome, the sheet, or the calm sheet. @param {'welcome' | 'sheet' | 'calm'} which */
+/**
+ * What is on the page: the welcome, the sheet, or the calm sheet.
+ * @param {'welcome' | 'sheet' | 'calm'} which
+ */
 function turnTo(which) {
     show(byPart('welcome'), which === 'welcome');
     show(byPart('calm'), which === 'calm');
@@ -236,7 +247,8 @@ async function next() {
             keptWork.forget();
             calm(
                 'Nothing is left to look at',
-                'You have seen every segment that needs you now. More may come as others finish theirs, or when new stars are loaded.',
+                'You have seen every segment that needs you now. More may come as others finish ' +
+                    'theirs, or when new stars are loaded.',
                 'Look again',
                 () => void next()
             );
@@ -259,7 +271,7 @@ function takeFailed(error) {
         error instanceof api.Unreached ||
         (error instanceof api.Problem && (error.status >= 500 || error.status === 429));
     if (!passing) return;
-    const wait = error instanceof api.Problem ? error.retryAfterMs ?? AGAIN_MS : AGAIN_MS;
+    const wait = error instanceof api.Problem ? (error.retryAfterMs ?? AGAIN_MS) : AGAIN_MS;
     againTimer = window.setTimeout(() => void next(), Math.max(wait, 1000));
 }
 
@@ -299,11 +311,18 @@ function finish() {
     keptWork.forget();
     model.sheet = null;
     void queue.add(item);
-    spoken(said.marks.length === 0 ? 'No dips here: done.' : `${format.counted(said.marks.length, 'mark')} handed in.`);
+    spoken(
+        said.marks.length === 0
+            ? 'No dips here: done.'
+            : `${format.counted(said.marks.length, 'mark')} handed in.`
+    );
     void next();
 }
 
-/** @param {import('./queue.js').Waiting} item @param {{review: number, late: boolean, control?: api.Control}} answer */
+/**
+ * @param {import('./queue.js').Waiting} item
+ * @param {{review: number, late: boolean, control?: api.Control}} answer
+ */
 function reviewSent(item, answer) {
     const what = sent.get(item.key);
     sent.delete(item.key);
@@ -320,8 +339,10 @@ function queueChanged(state) {
     if (!state.signInNeeded || dialog.open || person === null) return;
     joinSheet(byPart('again-place'), {
         again: person.guest
-            ? 'The server no longer knows this guest. What waits can be sent only by the one who looked.'
-            : `The server no longer knows this browser. Sign in as ${person.handle}, and what waits is sent.`,
+            ? 'The server no longer knows this guest. What waits can be sent only by the one ' +
+              'who looked.'
+            : `The server no longer knows this browser. Sign in as ${person.handle}, and what ` +
+              'waits is sent.',
         handle: person.handle,
         onPerson: (back) => {
             dialog.close();
@@ -409,7 +430,9 @@ function wire() {
     onPress('help-open', openHelp);
     const single = /** @type {HTMLInputElement} */ (byPart('single-key'));
     single.checked = preference('single-key', 'on') === 'on';
-    single.addEventListener('change', () => setPreference('single-key', single.checked ? 'on' : 'off'));
+    single.addEventListener('change', () =>
+        setPreference('single-key', single.checked ? 'on' : 'off')
+    );
     const strip = byPart('strip');
     strip.addEventListener('focus', () => redraw('marks'));
     strip.addEventListener('blur', () => redraw('marks'));
@@ -438,7 +461,9 @@ async function start() {
         if (who === null) welcome();
         else signedIn(who);
     } catch (error) {
-        calm('The Desk cannot be set up now', sentence(error), 'Try again', () => location.reload());
+        calm('The Desk cannot be set up now', sentence(error), 'Try again', () =>
+            location.reload()
+        );
     }
 }
 

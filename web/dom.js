@@ -1,7 +1,8 @@
 /** Small helpers for the page itself. Texts only ever go in as text, never as markup. */
 
 /**
- * @typedef {Record<string, string | number | boolean | ((event: any) => void) | null | undefined>} Props
+ * @typedef {Record<string, string | number | boolean | ((event: any) => void) | null | undefined>}
+ * Props
  */
 
 /**

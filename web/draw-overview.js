@@ -6,7 +6,12 @@ import { stripPlot } from './draw-strip.js';
 
 /** @typedef {import('./geometry.js').Span} Span */
 
-/** @param {number} width @param {number} height @param {number} unit see Inks.unit @returns {import('./geometry.js').Plot} */
+/**
+ * @param {number} width
+ * @param {number} height
+ * @param {number} unit see Inks.unit
+ * @returns {import('./geometry.js').Plot}
+ */
 export function overviewPlot(width, height, unit) {
     const { left, width: across } = stripPlot(width, height, unit);
     return { left, top: 4, width: across, height: Math.max(height - 8, 1) };

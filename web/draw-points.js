@@ -57,7 +57,12 @@ function drawDots(pen, inks, curve, view, plot, dot, [from, to]) {
  * @param {View} view @param {Plot} plot
  */
 function drawColumns({ pen, scale }, inks, curve, view, plot) {
-    const columns = columnsOf(curve.times, curve.flux, view, Math.max(1, Math.round(plot.width * scale)));
+    const columns = columnsOf(
+        curve.times,
+        curve.flux,
+        view,
+        Math.max(1, Math.round(plot.width * scale))
+    );
     const wide = plot.width / columns.count;
     const least = 1.5;
     /** @type {(column: number, high: number, low: number) => void} */

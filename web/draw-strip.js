@@ -27,7 +27,8 @@ export function stripPlot(width, height, unit) {
 }
 
 /** @param {Inks} inks @param {number} size for text of 16 px @param {string} [style] */
-const fontOf = (inks, size, style = '') => `${style} ${(size * inks.unit).toFixed(1)}px ${inks.font}`;
+const fontOf = (inks, size, style = '') =>
+    `${style} ${(size * inks.unit).toFixed(1)}px ${inks.font}`;
 
 /** A hairline through the middle of a device pixel. @param {number} at @param {number} scale */
 const crisp = (at, scale) => (Math.floor(at * scale) + 0.5) / scale;
@@ -72,7 +73,8 @@ function drawGaps({ pen }, inks, view, plot, gaps) {
     for (const gap of gaps) {
         const from = Math.max(timeToX(view, plot, gap.starts), plot.left);
         const to = Math.min(timeToX(view, plot, gap.ends), plot.left + plot.width);
-        if (to - from > 56 * inks.unit) pen.fillText('no data', (from + to) / 2, plot.top + plot.height / 2);
+        if (to - from > 56 * inks.unit)
+            pen.fillText('no data', (from + to) / 2, plot.top + plot.height / 2);
     }
 }
 
@@ -135,7 +137,9 @@ function drawTimeAxis({ pen, scale, height }, inks, view, plot, title) {
 }
 
 /** The usual scatter of a point, as a bar beside the axis.
- * @param {Paper} paper @param {Inks} inks @param {number} noise @param {View} view @param {Plot} plot */
+ * @param {Paper} paper @param {Inks} inks @param {number} noise @param {View} view @param {Plot}
+ * plot
+ */
 function drawNoise({ pen }, inks, noise, view, plot) {
     const tall = (2 * noise * plot.height) / (view.f1 - view.f0);
     if (!(tall > 4) || tall > plot.height / 2) return;
@@ -214,7 +218,11 @@ function drawName(pen, inks, mark, left, rect) {
     pen.strokeStyle = inks.own;
 }
 
-/** @param {CanvasRenderingContext2D} pen @param {Inks} inks @param {import('./paper.js').Rect} rect */
+/**
+ * @param {CanvasRenderingContext2D} pen
+ * @param {Inks} inks
+ * @param {import('./paper.js').Rect} rect
+ */
 function drawHandles(pen, inks, rect) {
     pen.fillStyle = inks.ground;
     pen.lineWidth = 1.5;

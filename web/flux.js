@@ -35,7 +35,10 @@ function insist(good, sentence) {
 export function readFlux(body) {
     insist(body.byteLength >= HEAD_BYTES, 'it is shorter than its own heading');
     const data = new DataView(body);
-    insist(MAGIC.every((byte, at) => data.getUint8(at) === byte), 'it is of another kind');
+    insist(
+        MAGIC.every((byte, at) => data.getUint8(at) === byte),
+        'it is of another kind'
+    );
     const count = data.getUint32(4, true);
     insist(count <= POINTS_MOST, `it claims ${count} points, which is too many`);
     insist(body.byteLength === HEAD_BYTES + 8 * count, 'its length does not fit its points');

@@ -23,11 +23,16 @@ export const hours = (days) => fixed(days * 24, 2);
 /** @typedef {'%' | 'ppm'} DepthUnit */
 
 /** @param {number} depth relative @param {DepthUnit} unit without the unit itself */
-export const depth = (depth, unit) => (unit === '%' ? fixed(depth * 100, 4) : fixed(depth * 1e6, 0));
+export const depth = (depth, unit) =>
+    unit === '%' ? fixed(depth * 100, 4) : fixed(depth * 1e6, 0);
 
 /** @param {string} text what a person typed @returns {number} NaN when it is no number */
 export function typed(text) {
-    const plain = text.trim().replace(MINUS, '-').replace(/[\s\u2009]/g, '').replace(',', '.');
+    const plain = text
+        .trim()
+        .replace(MINUS, '-')
+        .replace(/[\s\u2009]/g, '')
+        .replace(',', '.');
     return /^[-+]?(\d+\.?\d*|\.\d+)(e[-+]?\d+)?$/i.test(plain) ? Number(plain) : NaN;
 }
 
@@ -57,7 +62,8 @@ export function probability(value) {
 }
 
 /** @param {number} count @param {string} one @param {string} [many] */
-export const counted = (count, one, many = `${one}s`) => `${whole(count)} ${count === 1 ? one : many}`;
+export const counted = (count, one, many = `${one}s`) =>
+    `${whole(count)} ${count === 1 ? one : many}`;
 
 /** @param {string} text RFC 3339 @returns {string} in the reader's own zone */
 export function moment(text) {
@@ -69,5 +75,7 @@ export function moment(text) {
 /** @param {string} text RFC 3339 */
 export function day(text) {
     const when = new Date(text);
-    return Number.isNaN(when.getTime()) ? text : when.toLocaleDateString('en-GB', { dateStyle: 'medium' });
+    return Number.isNaN(when.getTime())
+        ? text
+        : when.toLocaleDateString('en-GB', { dateStyle: 'medium' });
 }

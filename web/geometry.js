@@ -270,7 +270,8 @@ export function heightsFor(times, flux, starts, ends) {
 /**
  * How many times larger the flux is in one view than in the other about a place: the median ratio
  * over the points of the interval, or of the nearest point when it holds none; 1 when unknown.
- * @param {ArrayLike<number>} times @param {ArrayLike<number>} above @param {ArrayLike<number>} below
+ * @param {ArrayLike<number>} times @param {ArrayLike<number>} above @param {ArrayLike<number>}
+ * below
  * @param {number} starts @param {number} ends
  */
 export function levelRatio(times, above, below, starts, ends) {

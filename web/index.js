@@ -1,4 +1,6 @@
-/** The first page: says what this is, and asks who is there. Whoever is known goes on to the Desk. */
+/**
+ * The first page: says what this is, and asks who is there. Whoever is known goes on to the Desk.
+ */
 import * as api from './api.js';
 import { el, part as byPart, sentence } from './dom.js';
 import { joinSheet } from './join-sheet.js';
@@ -11,7 +13,11 @@ async function start() {
         if ((await api.whoAmI()) !== null) toDesk();
         else joinSheet(place, { onPerson: toDesk });
     } catch (error) {
-        const again = el('button', { type: 'button', onclick: () => location.reload() }, 'Try again');
+        const again = el(
+            'button',
+            { type: 'button', onclick: () => location.reload() },
+            'Try again'
+        );
         place.replaceChildren(el('p', { class: 'trouble', role: 'alert' }, sentence(error)), again);
     }
 }

@@ -32,7 +32,8 @@ export function whatIsKept() {
         el(
             'p',
             {},
-            'No e-mail, no name, no age, no place; nothing goes to other sites. Your handle is not ',
+            'No e-mail, no name, no age, no place; nothing goes to other sites. Your handle is ' +
+                'not ',
             'published unless you ask for credit under My record. You can leave there at any ',
             'time: your handle is then removed, and your reviews stay without it.'
         )
@@ -95,7 +96,8 @@ function form(title, action, isNew, act, onPerson, handle = '') {
 /**
  * Fills `place` with the sheet and calls onPerson once somebody is there.
  * @param {HTMLElement} place
- * @param {{onPerson: (person: api.Person) => void, again?: string, handle?: string}} options `again`:
+ * @param {{onPerson: (person: api.Person) => void, again?: string, handle?: string}} options
+ * `again`:
  *     why somebody who was signed in has to do it again
  */
 export function joinSheet(place, { onPerson, again = '', handle = '' }) {

@@ -7,12 +7,15 @@ import * as format from './format.js';
 
 /** @param {State} state @param {number} now ms */
 export function outboxSentence(state, now) {
-    const loss = state.kept ? '' : ' This browser keeps nothing: leave this page open until they are sent.';
+    const loss = state.kept
+        ? ''
+        : ' This browser keeps nothing: leave this page open until they are sent.';
     if (state.waiting.length === 0) return `Everything is sent.${loss}`;
     if (state.signInNeeded) return `The server asks you to sign in again.${loss}`;
     if (state.sending) return `Sending.${loss}`;
     const why = state.trouble === '' ? '' : `${state.trouble} `;
-    if (state.nextTry === null) return `${why}They are sent when their reviewer is signed in.${loss}`;
+    if (state.nextTry === null)
+        return `${why}They are sent when their reviewer is signed in.${loss}`;
     const seconds = Math.max(1, Math.ceil((state.nextTry - now) / 1000));
     return `${why}Trying again in ${format.counted(seconds, 'second')}.${loss}`;
 }

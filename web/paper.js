@@ -9,7 +9,8 @@
 /**
  * @typedef {object} Inks
  * @property {string} ink points and figures @property {string} faint thin rules
- * @property {string} soft the dense parts of a chart, lighter @property {string} band every other day
+ * @property {string} soft the dense parts of a chart, lighter @property {string} band every other
+ * day
  * @property {string} own the reader's marks @property {string} consensus
  * @property {string} ground the paper @property {string} font figures @property {boolean} forced
  * @property {number} unit what the page's text is larger by than 16 px
@@ -37,7 +38,8 @@ export function paperOf(canvas, width, height) {
 }
 
 /** The size of the page's text over 16 px, which the charts' figures follow. */
-export const unitNow = () => parseFloat(getComputedStyle(document.documentElement).fontSize) / 16 || 1;
+export const unitNow = () =>
+    parseFloat(getComputedStyle(document.documentElement).fontSize) / 16 || 1;
 
 /** The inks in force now, from the page's custom properties. @returns {Inks} */
 export function inksNow() {

@@ -1,5 +1,6 @@
 /**
- * Reviews that wait to be sent. A review is kept (over reloads, where the browser lets us) until the
+ * Reviews that wait to be sent. A review is kept (over reloads, where the browser lets us) until
+ * the
  * server has said that it has it, or that it never will. Pure of browser things: storage, sending,
  * clock and timers are handed in.
  */

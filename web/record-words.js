@@ -18,16 +18,26 @@ const known = (rate) =>
  */
 export function skillSentence(skill) {
     if (skill === null || !known(skill.hit))
-        return 'Not known yet: it takes some looks at segments that others looked at too, and a consensus run after them.';
-    const hit = `By the latest estimate you mark about ${format.percent(skill.hit.value)} of the dips you are shown (90 % interval: ${between(skill.hit)})`;
+        return (
+            'Not known yet: it takes some looks at segments that others looked at too, and a ' +
+            'consensus run after them.'
+        );
+    const hit =
+        `By the latest estimate you mark about ${format.percent(skill.hit.value)} of ` +
+        `the dips you are shown (90 % interval: ${between(skill.hit)})`;
     if (!known(skill.chance)) return `${hit}.`;
-    return `${hit}, and about ${format.percent(skill.chance.value)} of the places that others marked but that are no dip (${between(skill.chance)}).`;
+    return (
+        `${hit}, and about ${format.percent(skill.chance.value)} of the places that others ` +
+        `marked but that are no dip (${between(skill.chance)}).`
+    );
 }
 
 /** @param {{starts: number, ends: number, low: number, high: number, certainty: string}} mark */
 export function markSentence(mark) {
     const span = `${format.time(mark.starts)} to ${format.time(mark.ends)}`;
-    const size = `${format.hours(mark.ends - mark.starts)}\u00a0h, ${format.fixed((mark.high - mark.low) * 100, 2)}\u00a0% deep`;
+    const size =
+        `${format.hours(mark.ends - mark.starts)}\u00a0h, ` +
+        `${format.fixed((mark.high - mark.low) * 100, 2)}\u00a0% deep`;
     return `${span} (${size}${mark.certainty === 'unsure' ? ', unsure' : ''})`;
 }
 

@@ -16,7 +16,10 @@ let person = null;
 /** @param {string} name @returns {HTMLButtonElement} */
 const button = (name) => /** @type {HTMLButtonElement} */ (byPart(name));
 
-/** @param {{looks: number, marks: number, days_looked: number, first: string | null, last: string | null}} totals */
+/**
+ * @param {{looks: number, marks: number, days_looked: number, first: string | null, last: string |
+ * null}} totals
+ */
 function fillTotals(totals) {
     /** @type {[string, string][]} */
     const pairs = [
@@ -31,7 +34,10 @@ function fillTotals(totals) {
     );
 }
 
-/** @param {{candidate: number, star: string, mid_time: number, time_reference?: string, probability: number}[]} touched */
+/**
+ * @param {{candidate: number, star: string, mid_time: number, time_reference?: string, probability:
+ * number}[]} touched
+ */
 function fillTouched(touched) {
     show(byPart('touched'), touched.length > 0);
     show(byPart('touched-none'), touched.length === 0);
@@ -94,7 +100,8 @@ function fillMe(me) {
     say(
         byPart('me'),
         me.guest
-            ? `You are ${me.handle}, a guest ${since}, tied to this browser. Choose a passphrase to come back from anywhere.`
+            ? `You are ${me.handle}, a guest ${since}, tied to this browser. Choose a ` +
+                  'passphrase to come back from anywhere.'
             : `You are ${me.handle}, here ${since}.`
     );
     /** @type {HTMLInputElement} */ (byPart('credit')).checked = me.credit;
@@ -108,7 +115,8 @@ async function fillWaiting() {
     show(byPart('waiting-here'), mine.length > 0);
     say(
         byPart('waiting-here'),
-        `${format.counted(mine.length, 'review')} waiting in this browser; the Desk sends what waits.`
+        `${format.counted(mine.length, 'review')} waiting in this browser; the Desk sends what ` +
+            'waits.'
     );
 }
 
@@ -195,7 +203,10 @@ function wire() {
         void atWork(button('passphrase-set'), byPart('passphrase-trouble'), async () => {
             fillMe(await api.changeMe({ passphrase: input.value }));
             input.value = '';
-            say(byPart('passphrase-note'), 'It is set. Sign in with your handle and this passphrase.');
+            say(
+                byPart('passphrase-note'),
+                'It is set. Sign in with your handle and this passphrase.'
+            );
         });
     });
     byPart('earlier').addEventListener('click', () =>
@@ -210,7 +221,9 @@ function wire() {
         if (!person?.guest) return void atWork(button('sign-out'), byPart('door-trouble'), signOut);
         ask({
             title: 'Sign out as a guest?',
-            text: 'A guest has no passphrase, so nobody can sign in as this guest again. Your reviews stay. To come back as the same person, choose a passphrase first.',
+            text:
+                'A guest has no passphrase, so nobody can sign in as this guest again. Your ' +
+                'reviews stay. To come back as the same person, choose a passphrase first.',
             yes: 'Sign out',
             act: signOut,
         });
@@ -218,7 +231,10 @@ function wire() {
     byPart('leave').addEventListener('click', () =>
         ask({
             title: 'Leave and be forgotten?',
-            text: 'Your handle and passphrase are removed, and everything that this browser keeps of you. Your reviews stay, without your handle. This cannot be taken back.',
+            text:
+                'Your handle and passphrase are removed, and everything that this browser ' +
+                'keeps of you. Your reviews stay, without your handle. This cannot be taken ' +
+                'back.',
             yes: 'Leave and be forgotten',
             act: leave,
         })

@@ -10,7 +10,10 @@ import { hatch, paperOf } from './paper.js';
 const AT_ONCE = 3;
 const KEPT_MOST = 400;
 
-/** The stretch shown about a candidate: four lengths to each side, at least half a day. @param {Place} place */
+/**
+ * The stretch shown about a candidate: four lengths to each side, at least half a day.
+ * @param {Place} place
+ */
 export function stretchOf(place) {
     const half = Math.max(4.5 * (place.ends - place.starts), 0.5);
     return { t0: place.mid_time - half, t1: place.mid_time + half };
@@ -65,7 +68,8 @@ export function curveOf(place) {
 
 /** Resolves when there is room for one more request. @returns {Promise<void>} */
 async function turn() {
-    while (atWork >= AT_ONCE) await new Promise((resolve) => waiting.push(() => resolve(undefined)));
+    while (atWork >= AT_ONCE)
+        await new Promise((resolve) => waiting.push(() => resolve(undefined)));
     atWork++;
 }
 

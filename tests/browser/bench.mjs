@@ -19,7 +19,12 @@ export const SCIENCE = {
     passphrase: process.env.EBBMARK_SCIENCE_PASSPHRASE ?? 'tide table 1871',
 };
 export const DESKTOP = { viewport: { width: 1440, height: 900 } };
-export const PHONE = { viewport: { width: 390, height: 844 }, hasTouch: true, isMobile: true, deviceScaleFactor: 2 };
+export const PHONE = {
+    viewport: { width: 390, height: 844 },
+    hasTouch: true,
+    isMobile: true,
+    deviceScaleFactor: 2,
+};
 
 /** A bench for one file of tests: browser and server start before it and stop after. */
 export function bench() {
@@ -36,7 +41,8 @@ export function bench() {
             page.setDefaultTimeout(15_000);
             page.on('pageerror', (error) => wrong(page).push(String(error)));
             page.on('console', (message) => {
-                if (/Content Security Policy|Refused to/.test(message.text())) wrong(page).push(message.text());
+                if (/Content Security Policy|Refused to/.test(message.text()))
+                    wrong(page).push(message.text());
             });
             return page;
         },
@@ -48,7 +54,12 @@ export function bench() {
         }
         it.browser = await chromium.launch({
             executablePath: '/usr/bin/chromium',
-            args: ['--headless', '--no-sandbox', '--disable-gpu', '--disable-background-networking'],
+            args: [
+                '--headless',
+                '--no-sandbox',
+                '--disable-gpu',
+                '--disable-background-networking',
+            ],
         });
     });
     after(async () => {
@@ -85,10 +96,16 @@ export async function enterAsGuest(page) {
     await segmentShown(page);
 }
 
-/** Waits for a segment on the Desk. @param {Page} page @param {string} [other] one that it must not be any more */
+/**
+ * Waits for a segment on the Desk.
+ * @param {Page} page
+ * @param {string} [other] one that it must not be any more
+ */
 export async function segmentShown(page, other = '') {
     await page.waitForFunction((old) => {
-        const sheet = /** @type {HTMLElement | null} */ (document.querySelector('[data-part="sheet"]:not([hidden])'));
+        const sheet = /** @type {HTMLElement | null} */ (
+            document.querySelector('[data-part="sheet"]:not([hidden])')
+        );
         return sheet !== null && (sheet.dataset.segment ?? old) !== old;
     }, other);
     return String(await page.locator('[data-part="sheet"]').getAttribute('data-segment'));
@@ -113,7 +130,12 @@ export async function chart(page) {
     };
 }
 
-/** Drags the mouse over the chart. @param {Page} page @param {[number, number]} from @param {[number, number]} to shares */
+/**
+ * Drags the mouse over the chart.
+ * @param {Page} page
+ * @param {[number, number]} from
+ * @param {[number, number]} to shares
+ */
 export async function drag(page, from, to) {
     const { at } = await chart(page);
     const [one, other] = [at(...from), at(...to)];
@@ -131,10 +153,14 @@ export async function drag(page, from, to) {
 export async function fingers(page, paths) {
     const { at } = await chart(page);
     const session = await page.context().newCDPSession(page);
-    const points = (/** @type {number} */ step) => paths.map((path, id) => ({ ...at(...path[step]), id }));
+    const points = (/** @type {number} */ step) =>
+        paths.map((path, id) => ({ ...at(...path[step]), id }));
     await session.send('Input.dispatchTouchEvent', { type: 'touchStart', touchPoints: points(0) });
     for (let step = 1; step < paths[0].length; step++)
-        await session.send('Input.dispatchTouchEvent', { type: 'touchMove', touchPoints: points(step) });
+        await session.send('Input.dispatchTouchEvent', {
+            type: 'touchMove',
+            touchPoints: points(step),
+        });
     await session.send('Input.dispatchTouchEvent', { type: 'touchEnd', touchPoints: [] });
     await session.detach();
 }
@@ -143,8 +169,15 @@ export async function fingers(page, paths) {
 export async function rows(page) {
     return page.locator('[data-part="marks"] tbody tr').evaluateAll((list) =>
         list.map((row) => {
-            const [starts, ends, length, depth] = [...row.querySelectorAll('input')].map((input) => input.value);
-            return { starts: Number(starts), ends: Number(ends), length: Number(length), depth: Number(depth) };
+            const [starts, ends, length, depth] = [...row.querySelectorAll('input')].map(
+                (input) => input.value
+            );
+            return {
+                starts: Number(starts),
+                ends: Number(ends),
+                length: Number(length),
+                depth: Number(depth),
+            };
         })
     );
 }
@@ -156,7 +189,11 @@ export async function record(page) {
     return answer.json();
 }
 
-/** Waits until the server has so many reviews of this page's person. @param {Page} page @param {number} count */
+/**
+ * Waits until the server has so many reviews of this page's person.
+ * @param {Page} page
+ * @param {number} count
+ */
 export async function recordOf(page, count) {
     const until = Date.now() + 15_000;
     for (;;) {
@@ -169,13 +206,22 @@ export async function recordOf(page, count) {
     }
 }
 
-/** Presses Tab until the focus is on what the test looks for. @param {Page} page @param {(name: string) => boolean} wanted of the focused element's label or text */
+/**
+ * Presses Tab until the focus is on what the test looks for.
+ * @param {Page} page
+ * @param {(name: string) => boolean} wanted of the focused element's label or text
+ */
 export async function tabTo(page, wanted) {
     for (let press = 0; press < 80; press++) {
         await page.keyboard.press('Tab');
         const name = await page.evaluate(() => {
             const element = document.activeElement;
-            return element?.getAttribute('aria-label') ?? element?.closest('label')?.textContent ?? element?.textContent ?? '';
+            return (
+                element?.getAttribute('aria-label') ??
+                element?.closest('label')?.textContent ??
+                element?.textContent ??
+                ''
+            );
         });
         if (wanted(name.trim())) return;
     }

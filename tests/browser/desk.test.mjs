@@ -1,11 +1,31 @@
-/** The Desk as reviewers use it: by mouse, by keyboard alone, by finger, and without a connection. */
+/**
+ * The Desk as reviewers use it: by mouse, by keyboard alone, by finger, and without a connection.
+ */
 import assert from 'node:assert/strict';
 import test from 'node:test';
-import { bench, chart, close, DESKTOP, drag, enterAsGuest, fingers, newHandle, PHONE, record, recordOf, rows, segmentShown, tabTo } from './bench.mjs';
+import {
+    bench,
+    chart,
+    close,
+    DESKTOP,
+    drag,
+    enterAsGuest,
+    fingers,
+    newHandle,
+    PHONE,
+    record,
+    recordOf,
+    rows,
+    segmentShown,
+    tabTo,
+} from './bench.mjs';
 
 const it = bench();
-const near = (/** @type {number} */ one, /** @type {number} */ other, /** @type {number} */ within) =>
-    assert.ok(Math.abs(one - other) <= within, `${one} is not within ${within} of ${other}`);
+const near = (
+    /** @type {number} */ one,
+    /** @type {number} */ other,
+    /** @type {number} */ within
+) => assert.ok(Math.abs(one - other) <= within, `${one} is not within ${within} of ${other}`);
 
 test('somebody joins, boxes a dip with the mouse, sends it, and finds it in the record', async () => {
     const page = await it.page();
@@ -17,7 +37,10 @@ test('somebody joins, boxes a dip with the mouse, sends it, and finds it in the 
     await join.getByRole('button', { name: 'Join' }).click();
     const segment = await segmentShown(page);
     assert.match(page.url(), /\/desk$/);
-    assert.equal(await page.getByRole('button', { name: 'Send marks' }).getAttribute('aria-disabled'), 'true');
+    assert.equal(
+        await page.getByRole('button', { name: 'Send marks' }).getAttribute('aria-disabled'),
+        'true'
+    );
     await drag(page, [0.4, 0.3], [0.5, 0.6]);
     const [drawn] = await rows(page);
     near(drawn.length, (drawn.ends - drawn.starts) * 24, 0.01);
@@ -40,9 +63,17 @@ test('a box lies where the mouse drew it', async () => {
     const page = await it.page();
     await enterAsGuest(page);
     const { width } = await chart(page);
-    const [, from, to] = /** @type {RegExpExecArray} */ (/([\d.]+) to ([\d.]+)/.exec(String(await page.locator('[data-part="title"]').textContent())));
+    const [, from, to] = /** @type {RegExpExecArray} */ (
+        /([\d.]+) to ([\d.]+)/.exec(String(await page.locator('[data-part="title"]').textContent()))
+    );
+    const gutter =
+        72 *
+        (await page.evaluate(
+            () => parseFloat(getComputedStyle(document.documentElement).fontSize) / 16
+        ));
     const timeAt = (/** @type {number} */ share) =>
-        Number(from) + ((share * width - 72) / (width - 82)) * (Number(to) - Number(from));
+        Number(from) +
+        ((share * width - gutter) / (width - gutter - 10)) * (Number(to) - Number(from));
     await drag(page, [0.3, 0.2], [0.42, 0.7]);
     const [drawn] = await rows(page);
     near(drawn.starts, timeAt(0.3), 0.03);
@@ -123,11 +154,15 @@ test('the whole job is done by keyboard alone', async () => {
     for (let press = 0; press < 6; press++) await page.keyboard.press('Shift+ArrowRight');
     await page.keyboard.press('Enter');
     for (let press = 0; press < 12; press++) await page.keyboard.press('ArrowRight');
-    await page.waitForFunction(() => /mark begun/.test(document.querySelector('[data-part="spoken"]')?.textContent ?? ''));
+    await page.waitForFunction(() =>
+        /mark begun/.test(document.querySelector('[data-part="spoken"]')?.textContent ?? '')
+    );
     await page.keyboard.press('Enter');
     const [made] = await rows(page);
     assert.ok(made.length > 1, JSON.stringify(made));
-    await page.waitForFunction(() => /^Mark 1 made/.test(document.querySelector('[data-part="spoken"]')?.textContent ?? ''));
+    await page.waitForFunction(() =>
+        /^Mark 1 made/.test(document.querySelector('[data-part="spoken"]')?.textContent ?? '')
+    );
     await tabTo(page, (name) => name === 'Mark 1 ends');
     for (let press = 0; press < 4; press++) await page.keyboard.press('ArrowRight');
     const [longer] = await rows(page);
@@ -156,7 +191,13 @@ test('the cursor speaks its time and flux, and whether it is in a mark', async (
     await enterAsGuest(page);
     await page.locator('[data-part="strip"]').focus();
     const spoken = (/** @type {RegExp} */ pattern) =>
-        page.waitForFunction((text) => new RegExp(text).test(document.querySelector('[data-part="spoken"]')?.textContent ?? ''), pattern.source);
+        page.waitForFunction(
+            (text) =>
+                new RegExp(text).test(
+                    document.querySelector('[data-part="spoken"]')?.textContent ?? ''
+                ),
+            pattern.source
+        );
     await page.keyboard.press('Shift+ArrowRight');
     await spoken(/^day \d+\.\d{4}, (flux \d\.\d{5}|no data)$/);
     await page.keyboard.press('m');
@@ -176,17 +217,26 @@ test('zoom, pan and the window below agree, by wheel, buttons, keys and drag', a
     const grip = page.getByRole('slider', { name: 'Stretch shown above' });
     const shown = async () => {
         const text = await grip.getAttribute('aria-valuetext');
-        const [, from, to] = /** @type {RegExpExecArray} */ (/day ([\d.]+) to ([\d.]+)/.exec(String(text)));
+        const [, from, to] = /** @type {RegExpExecArray} */ (
+            /day ([\d.]+) to ([\d.]+)/.exec(String(text))
+        );
         return { from: Number(from), to: Number(to), days: Number(to) - Number(from) };
     };
-    const settle = () => page.evaluate(() => new Promise((resolve) => requestAnimationFrame(() => requestAnimationFrame(() => resolve(undefined)))));
+    const settle = () =>
+        page.evaluate(
+            () =>
+                new Promise((resolve) =>
+                    requestAnimationFrame(() => requestAnimationFrame(() => resolve(undefined)))
+                )
+        );
     const whole = await shown();
     const { at } = await chart(page);
     const middle = at(0.5, 0.5);
     await page.mouse.move(middle.x, middle.y);
     await page.mouse.wheel(0, -400);
     await page.waitForFunction((days) => {
-        const text = document.querySelector('[data-part="window"]')?.getAttribute('aria-valuetext') ?? '';
+        const text =
+            document.querySelector('[data-part="window"]')?.getAttribute('aria-valuetext') ?? '';
         const [from, to] = (text.match(/[\d.]+/g) ?? []).map(Number);
         return to - from < days * 0.8;
     }, whole.days);
@@ -203,7 +253,9 @@ test('zoom, pan and the window below agree, by wheel, buttons, keys and drag', a
     assert.ok(overview && box);
     await page.mouse.move(box.x + box.width / 2, overview.y + overview.height / 2);
     await page.mouse.down();
-    await page.mouse.move(box.x + box.width / 2 - 60, overview.y + overview.height / 2, { steps: 3 });
+    await page.mouse.move(box.x + box.width / 2 - 60, overview.y + overview.height / 2, {
+        steps: 3,
+    });
     await page.mouse.up();
     await settle();
     const dragged = await shown();
@@ -213,7 +265,9 @@ test('zoom, pan and the window below agree, by wheel, buttons, keys and drag', a
     assert.ok(right);
     await page.mouse.move(right.x + right.width, overview.y + overview.height / 2);
     await page.mouse.down();
-    await page.mouse.move(right.x + right.width + 50, overview.y + overview.height / 2, { steps: 3 });
+    await page.mouse.move(right.x + right.width + 50, overview.y + overview.height / 2, {
+        steps: 3,
+    });
     await page.mouse.up();
     await settle();
     assert.ok((await shown()).days > dragged.days);
@@ -228,11 +282,17 @@ test('the view without the trend is another picture of the same marks', async ()
     const page = await it.page();
     await enterAsGuest(page);
     await drag(page, [0.4, 0.3], [0.5, 0.6]);
-    const picture = () => page.locator('[data-part="strip-points"]').evaluate((canvas) => /** @type {HTMLCanvasElement} */ (canvas).toDataURL());
+    const picture = () =>
+        page
+            .locator('[data-part="strip-points"]')
+            .evaluate((canvas) => /** @type {HTMLCanvasElement} */ (canvas).toDataURL());
     const before = { rows: await rows(page), picture: await picture() };
     await page.getByRole('button', { name: 'Trend removed' }).click();
     await page.waitForFunction(
-        (old) => /** @type {HTMLCanvasElement} */ (document.querySelector('[data-part="strip-points"]')).toDataURL() !== old,
+        (old) =>
+            /** @type {HTMLCanvasElement} */ (
+                document.querySelector('[data-part="strip-points"]')
+            ).toDataURL() !== old,
         before.picture
     );
     assert.deepEqual(await rows(page), before.rows);
@@ -242,15 +302,31 @@ test('the view without the trend is another picture of the same marks', async ()
 test('on a phone one finger draws, two fingers zoom, and what is sent is what was drawn', async () => {
     const page = await it.page(PHONE);
     await enterAsGuest(page);
-    await fingers(page, [[[0.3, 0.3], [0.4, 0.4], [0.55, 0.6]]]);
+    await fingers(page, [
+        [
+            [0.3, 0.3],
+            [0.4, 0.4],
+            [0.55, 0.6],
+        ],
+    ]);
     const [drawn] = await rows(page);
     assert.ok(drawn.length > 10, JSON.stringify(drawn));
     await fingers(page, [
-        [[0.45, 0.5], [0.4, 0.5], [0.3, 0.5]],
-        [[0.6, 0.5], [0.7, 0.5], [0.85, 0.5]],
+        [
+            [0.45, 0.5],
+            [0.4, 0.5],
+            [0.3, 0.5],
+        ],
+        [
+            [0.6, 0.5],
+            [0.7, 0.5],
+            [0.85, 0.5],
+        ],
     ]);
     assert.deepEqual(await rows(page), [drawn]);
-    const text = await page.getByRole('slider', { name: 'Stretch shown above' }).getAttribute('aria-valuetext');
+    const text = await page
+        .getByRole('slider', { name: 'Stretch shown above' })
+        .getAttribute('aria-valuetext');
     const [from, to] = (text?.match(/[\d.]+/g) ?? []).map(Number);
     assert.ok(to - from < 8, String(text));
     const segment = await segmentShown(page);
@@ -266,7 +342,10 @@ test('on a phone the chart, the loupe and both endings are in sight at once', as
     await enterAsGuest(page);
     for (const part of ['strip', 'loupe', 'overview', 'no-dips', 'send']) {
         const box = await page.locator(`[data-part="${part}"]`).boundingBox();
-        assert.ok(box && box.y >= 0 && box.y + box.height <= 844, `${part} ends at ${box && box.y + box.height}`);
+        assert.ok(
+            box && box.y >= 0 && box.y + box.height <= 844,
+            `${part} ends at ${box && box.y + box.height}`
+        );
     }
     await close(page);
 });
@@ -274,11 +353,23 @@ test('on a phone the chart, the loupe and both endings are in sight at once', as
 test('every button and field on a phone is at least 44 px high and wide', async () => {
     const page = await it.page(PHONE);
     await enterAsGuest(page);
-    await fingers(page, [[[0.3, 0.3], [0.55, 0.6]]]);
+    await fingers(page, [
+        [
+            [0.3, 0.3],
+            [0.55, 0.6],
+        ],
+    ]);
     const small = await page.locator('button, input, select, .masthead a').evaluateAll((list) =>
         list
-            .filter((element) => /** @type {HTMLElement} */ (element).checkVisibility() && !element.closest('label.tick'))
-            .map((element) => ({ name: element.textContent || element.getAttribute('aria-label'), box: element.getBoundingClientRect() }))
+            .filter(
+                (element) =>
+                    /** @type {HTMLElement} */ (element).checkVisibility() &&
+                    !element.closest('label.tick')
+            )
+            .map((element) => ({
+                name: element.textContent || element.getAttribute('aria-label'),
+                box: element.getBoundingClientRect(),
+            }))
             .filter(({ box }) => box.width < 44 || box.height < 44)
             .map(({ name, box }) => `${name} ${box.width} x ${box.height}`)
     );
@@ -315,7 +406,10 @@ test('a review that waits outlives a reload, and is sent once', async () => {
             new Promise((resolve) => {
                 const request = indexedDB.open('ebbmark');
                 request.onsuccess = () => {
-                    const all = request.result.transaction('waiting-reviews').objectStore('waiting-reviews').count();
+                    const all = request.result
+                        .transaction('waiting-reviews')
+                        .objectStore('waiting-reviews')
+                        .count();
                     all.onsuccess = () => resolve(all.result === 1);
                 };
             })
@@ -341,7 +435,12 @@ test('a reload in the middle of a look brings back the same segment with the sam
     await page.reload();
     assert.equal(await segmentShown(page), before.segment);
     assert.deepEqual(await rows(page), before.rows);
-    assert.equal(await page.getByRole('button', { name: 'A break in the data' }).getAttribute('aria-pressed'), 'true');
+    assert.equal(
+        await page
+            .getByRole('button', { name: 'A break in the data' })
+            .getAttribute('aria-pressed'),
+        'true'
+    );
     await close(page);
 });
 
@@ -355,7 +454,10 @@ test('the help is one key away, gives the focus back, and its key can be switche
     await help.getByLabel(/The key \? opens/).uncheck();
     await page.keyboard.press('Escape');
     await help.waitFor({ state: 'hidden' });
-    assert.equal(await page.evaluate(() => document.activeElement?.getAttribute('data-part')), 'strip');
+    assert.equal(
+        await page.evaluate(() => document.activeElement?.getAttribute('data-part')),
+        'strip'
+    );
     await page.getByRole('button', { name: 'Undo' }).focus();
     await page.keyboard.press('?');
     await page.waitForTimeout(200);
@@ -387,9 +489,12 @@ test('at night the chart still prints in dark ink', async () => {
     const darkest = () =>
         page.locator('[data-part="strip-points"]').evaluate((element) => {
             const canvas = /** @type {HTMLCanvasElement} */ (element);
-            const { data } = /** @type {CanvasRenderingContext2D} */ (canvas.getContext('2d')).getImageData(0, 0, canvas.width, canvas.height);
+            const { data } = /** @type {CanvasRenderingContext2D} */ (
+                canvas.getContext('2d')
+            ).getImageData(0, 0, canvas.width, canvas.height);
             let least = 255;
-            for (let at = 0; at < data.length; at += 4) if (data[at + 3] > 250) least = Math.min(least, data[at]);
+            for (let at = 0; at < data.length; at += 4)
+                if (data[at + 3] > 250) least = Math.min(least, data[at]);
             return least;
         });
     assert.ok((await darkest()) > 20);

@@ -24,7 +24,8 @@ async function staged(options) {
 /** @param {import('playwright-core').Page} page */
 const noDips = (page) => page.getByRole('button', { name: 'No dips here' }).click();
 /** @param {import('playwright-core').Page} page */
-const sent = (page) => page.getByRole('button', { name: 'waiting to send' }).waitFor({ state: 'hidden' });
+const sent = (page) =>
+    page.getByRole('button', { name: 'waiting to send' }).waitFor({ state: 'hidden' });
 
 test('after 503 with Retry-After the review is sent again, not before its time, with the same key', async () => {
     const { mock, page } = await staged();
@@ -39,7 +40,14 @@ test('after 503 with Retry-After the review is sent again, not before its time, 
         keys.add(request.headers()['idempotency-key']);
     });
     mock.fault = (_method, path) =>
-        path === '/reviews' && times.length < 2 ? { status: 503, kind: 'overloaded', detail: 'Too much is waiting.', headers: { 'Retry-After': '2' } } : null;
+        path === '/reviews' && times.length < 2
+            ? {
+                  status: 503,
+                  kind: 'overloaded',
+                  detail: 'Too much is waiting.',
+                  headers: { 'Retry-After': '2' },
+              }
+            : null;
     await noDips(page);
     await page.getByRole('button', { name: '1 waiting to send' }).click();
     await page.getByText(/Too much is waiting\. Trying again in \d seconds?\./).waitFor();
@@ -90,7 +98,10 @@ test('whoever is no longer known in mid-send signs in again, and the review is s
 test('a review that cannot be taken any more is told, and the next look goes on', async () => {
     const { mock, page } = await staged();
     await enterAsGuest(page);
-    mock.fault = (_method, path) => (path === '/reviews' ? { status: 409, kind: 'expired_lease', detail: 'The segment is settled.' } : null);
+    mock.fault = (_method, path) =>
+        path === '/reviews'
+            ? { status: 409, kind: 'expired_lease', detail: 'The segment is settled.' }
+            : null;
     const segment = await segmentShown(page);
     await noDips(page);
     await page.getByText(/was not taken\. The segment is settled\./).waitFor();
@@ -102,7 +113,14 @@ test('a review that cannot be taken any more is told, and the next look goes on'
 test('a control says at once what had been put there, and nothing else ever speaks of others', async () => {
     const { mock, page } = await staged();
     mock.control = (review) =>
-        review.review === 1 ? { kind: 'injected', dips: [{ starts: review.marks[0].starts, ends: review.marks[0].ends, found: true }] } : undefined;
+        review.review === 1
+            ? {
+                  kind: 'injected',
+                  dips: [
+                      { starts: review.marks[0].starts, ends: review.marks[0].ends, found: true },
+                  ],
+              }
+            : undefined;
     await enterAsGuest(page);
     await drag(page, [0.4, 0.3], [0.45, 0.6]);
     const [drawn] = await rows(page);
@@ -110,7 +128,11 @@ test('a control says at once what had been put there, and nothing else ever spea
     await page.getByRole('button', { name: 'Send marks' }).click();
     const slip = page.locator('[data-part="slip"]');
     await slip.getByText(/was a control: a model dip had been put into it/).waitFor();
-    assert.ok((await slip.textContent())?.includes(`${drawn.starts.toFixed(4)} to ${drawn.ends.toFixed(4)} (you found it)`));
+    assert.ok(
+        (await slip.textContent())?.includes(
+            `${drawn.starts.toFixed(4)} to ${drawn.ends.toFixed(4)} (you found it)`
+        )
+    );
     await segmentShown(page, segment);
     await noDips(page);
     await slip.waitFor({ state: 'hidden' });
@@ -150,7 +172,9 @@ test('a server that cannot be reached is said so, and tried again when the conne
 
 test('a light curve that makes no sense is said to, and the Desk stays whole', async () => {
     const { page } = await staged();
-    await page.route('**/flux?**', (route) => route.fulfill({ status: 200, body: 'EBF1 and then nonsense, of any length at all' }));
+    await page.route('**/flux?**', (route) =>
+        route.fulfill({ status: 200, body: 'EBF1 and then nonsense, of any length at all' })
+    );
     await page.goto('/desk');
     await page.getByRole('button', { name: 'Look around as a guest' }).click();
     await page.getByText(/This light curve cannot be shown/).waitFor();
@@ -178,7 +202,10 @@ test('a handle full of markup is shown as text', async () => {
 test('twenty thousand points are panned and drawn over in time for the eye', async () => {
     const { page } = await staged({ segments: 3, points: 22_000, days: 27 });
     await enterAsGuest(page);
-    assert.match(String(await page.locator('[data-part="subtitle"]').textContent()), /^2\d,\d{3} points/);
+    assert.match(
+        String(await page.locator('[data-part="subtitle"]').textContent()),
+        /^2\d,\d{3} points/
+    );
     await page.getByRole('button', { name: 'Zoom in' }).click();
     const took = await page.evaluate(async () => {
         const grip = /** @type {HTMLElement} */ (document.querySelector('[data-part="window"]'));
@@ -196,7 +223,9 @@ test('twenty thousand points are panned and drawn over in time for the eye', asy
         }
         return times.sort((a, b) => a - b)[20];
     });
-    console.log(`# median of a frame with 20,000 points and more: ${took.toFixed(1)} ms (software drawing)`);
+    console.log(
+        `# median of a frame with 20,000 points and more: ${took.toFixed(1)} ms (software drawing)`
+    );
     assert.ok(took < 50, `a frame took ${took.toFixed(1)} ms`);
     await close(page);
 });

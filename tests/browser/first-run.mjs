@@ -1,4 +1,6 @@
-/** Signs in to the server of EBBMARK_URL and has the consensus run once, so that there is a list. */
+/**
+ * Signs in to the server of EBBMARK_URL and has the consensus run once, so that there is a list.
+ */
 import { SCIENCE } from './bench.mjs';
 
 const base = `${process.env.EBBMARK_URL}/api/v1`;
@@ -11,7 +13,8 @@ async function ask(method, path, body, cookie = '') {
         headers: { 'Ebbmark-Request': '1', 'Content-Type': 'application/json', Cookie: cookie },
         body: body && JSON.stringify(body),
     });
-    if (!answer.ok && answer.status !== 409) throw new Error(`${method} ${path}: ${answer.status} ${await answer.text()}`);
+    if (!answer.ok && answer.status !== 409)
+        throw new Error(`${method} ${path}: ${answer.status} ${await answer.text()}`);
     return answer;
 }
 

@@ -1,7 +1,16 @@
 /** My record and Candidates, as their users use them. */
 import assert from 'node:assert/strict';
 import test from 'node:test';
-import { bench, close, enterAsGuest, newHandle, recordOf, SCIENCE, segmentShown, signInAsScience } from './bench.mjs';
+import {
+    bench,
+    close,
+    enterAsGuest,
+    newHandle,
+    recordOf,
+    SCIENCE,
+    segmentShown,
+    signInAsScience,
+} from './bench.mjs';
 
 const it = bench();
 
@@ -9,12 +18,19 @@ const it = bench();
 async function column(page, name) {
     return page.locator(`[data-part="rows"] [data-label="${name}"]`).allTextContents();
 }
-/** @param {import('playwright-core').Page} page @param {() => Promise<unknown>} act that makes the list be asked for anew */
+/**
+ * @param {import('playwright-core').Page} page
+ * @param {() => Promise<unknown>} act that makes the list be asked for anew
+ */
 async function listAfter(page, act) {
-    const answered = page.waitForResponse((response) => /\/api\/v1\/candidates\?/.test(response.url()));
+    const answered = page.waitForResponse((response) =>
+        /\/api\/v1\/candidates\?/.test(response.url())
+    );
     await act();
     const answer = await (await answered).json();
-    await page.waitForFunction(() => !document.querySelector('[data-part="table"]')?.hasAttribute('aria-busy'));
+    await page.waitForFunction(
+        () => !document.querySelector('[data-part="table"]')?.hasAttribute('aria-busy')
+    );
     return answer;
 }
 
@@ -22,11 +38,22 @@ test('the candidates are ranked by probability, with the run and the caution abo
     const page = await it.page();
     await signInAsScience(page);
     await page.locator('[data-part="rows"] tr').first().waitFor();
-    const numbers = (await column(page, 'Probability')).map((text) => Number(text.replace(/[<>] /, '')));
+    const numbers = (await column(page, 'Probability')).map((text) =>
+        Number(text.replace(/[<>] /, ''))
+    );
     assert.ok(numbers.length > 0);
-    assert.deepEqual(numbers, [...numbers].sort((a, b) => b - a));
-    assert.match(String(await page.locator('[data-part="run"]').textContent()), /^Run [\d,]+ over [\d,]+ reviews?, finished .+\.$/);
-    assert.match(String(await page.locator('[data-part="caution"]').textContent()), /not a confirmed planet.*eclipsing binaries.*instrument artefacts.*independent follow-up/);
+    assert.deepEqual(
+        numbers,
+        [...numbers].sort((a, b) => b - a)
+    );
+    assert.match(
+        String(await page.locator('[data-part="run"]').textContent()),
+        /^Run [\d,]+ over [\d,]+ reviews?, finished .+\.$/
+    );
+    assert.match(
+        String(await page.locator('[data-part="caution"]').textContent()),
+        /not a confirmed planet.*eclipsing binaries.*instrument artefacts.*independent follow-up/
+    );
     await close(page);
 });
 
@@ -35,12 +62,25 @@ test('a heading sorts by its column, the other way at the second click, and says
     await signInAsScience(page);
     await page.locator('[data-part="rows"] tr').first().waitFor();
     const head = page.getByRole('columnheader', { name: 'SNR' });
-    for (const [state, way] of /** @type {[string, number][]} */ ([['descending', -1], ['ascending', 1]])) {
+    for (const [state, way] of /** @type {[string, number][]} */ ([
+        ['descending', -1],
+        ['ascending', 1],
+    ])) {
         const list = await listAfter(page, () => head.getByRole('button').click());
         assert.equal(await head.getAttribute('aria-sort'), state);
-        const values = list.candidates.map((/** @type {any} */ row) => row.snr).filter((/** @type {any} */ value) => value !== null);
-        assert.deepEqual(values, [...values].sort((a, b) => way * (a - b)));
-        assert.deepEqual(await column(page, 'SNR'), list.candidates.map((/** @type {any} */ row) => (row.snr === null ? '–' : row.snr.toFixed(1).replace('-', '−'))));
+        const values = list.candidates
+            .map((/** @type {any} */ row) => row.snr)
+            .filter((/** @type {any} */ value) => value !== null);
+        assert.deepEqual(
+            values,
+            [...values].sort((a, b) => way * (a - b))
+        );
+        assert.deepEqual(
+            await column(page, 'SNR'),
+            list.candidates.map((/** @type {any} */ row) =>
+                row.snr === null ? '–' : row.snr.toFixed(1).replace('-', '−')
+            )
+        );
     }
     assert.match(page.url(), /sort=snr/);
     await close(page);
@@ -52,15 +92,23 @@ test('filters stand in the address, survive a reload, and can be cleared', async
     await page.locator('[data-part="rows"] tr').first().waitFor();
     const all = String(await page.locator('[data-part="total"]').textContent());
     await page.getByLabel('Least probability').fill('0.5');
-    const list = await listAfter(page, () => page.getByRole('button', { name: 'Show', exact: true }).click());
-    assert.ok(list.candidates.length > 0 && list.candidates.every((/** @type {any} */ row) => row.probability >= 0.5));
+    const list = await listAfter(page, () =>
+        page.getByRole('button', { name: 'Show', exact: true }).click()
+    );
+    assert.ok(
+        list.candidates.length > 0 &&
+            list.candidates.every((/** @type {any} */ row) => row.probability >= 0.5)
+    );
     assert.match(page.url(), /min_probability=0\.5/);
     const csv = String(await page.getByRole('link', { name: 'Download CSV' }).getAttribute('href'));
     assert.match(csv, /format=csv/);
     assert.match(csv, /min_probability=0\.5/);
     const table = await page.request.get(csv);
     assert.match(String(table.headers()['content-type']), /^text\/csv/);
-    assert.equal((await table.text()).split('\n').filter((line) => /^"?\d/.test(line)).length, list.total);
+    assert.equal(
+        (await table.text()).split('\n').filter((line) => /^"?\d/.test(line)).length,
+        list.total
+    );
     await page.reload();
     await page.locator('[data-part="rows"] tr').first().waitFor();
     assert.equal(await page.getByLabel('Least probability').inputValue(), '0.5');
@@ -91,7 +139,9 @@ test('the list goes on page by page, and back', async (context) => {
     }
     const first = await column(page, 'No.');
     const second = await listAfter(page, () => next.click());
-    assert.ok(second.candidates.every((/** @type {any} */ row) => !first.includes(String(row.candidate))));
+    assert.ok(
+        second.candidates.every((/** @type {any} */ row) => !first.includes(String(row.candidate)))
+    );
     await listAfter(page, () => page.getByRole('link', { name: 'Page before' }).click());
     assert.deepEqual(await column(page, 'No.'), first);
     await close(page);
@@ -103,7 +153,9 @@ test('a thumbnail shows points', async () => {
     const canvas = page.locator('[data-part="rows"] canvas').first();
     await canvas.waitFor();
     await page.waitForFunction(() => {
-        const first = /** @type {HTMLCanvasElement} */ (document.querySelector('[data-part="rows"] canvas'));
+        const first = /** @type {HTMLCanvasElement} */ (
+            document.querySelector('[data-part="rows"] canvas')
+        );
         const pen = first?.getContext('2d');
         if (!pen || first.width < 10) return false;
         return pen.getImageData(0, 0, first.width, first.height).data.some((value) => value !== 0);
@@ -120,11 +172,19 @@ test('a closer look shows the marks and takes a verdict', async () => {
     assert.ok((await closer.locator('[data-part="closer-marks"] li').count()) > 0);
     await closer.getByLabel(/^Note/).fill('Looks like a dip.');
     await closer.getByRole('button', { name: 'Keep' }).click();
-    await closer.getByText(/keep by .*Looks like a dip\./).first().waitFor();
-    assert.equal(await closer.getByRole('button', { name: 'Keep' }).getAttribute('aria-pressed'), 'true');
+    await closer
+        .getByText(/keep by .*Looks like a dip\./)
+        .first()
+        .waitFor();
+    assert.equal(
+        await closer.getByRole('button', { name: 'Keep' }).getAttribute('aria-pressed'),
+        'true'
+    );
     await page.keyboard.press('Escape');
     await page.getByLabel('Verdict').selectOption('keep');
-    const list = await listAfter(page, () => page.getByRole('button', { name: 'Show', exact: true }).click());
+    const list = await listAfter(page, () =>
+        page.getByRole('button', { name: 'Show', exact: true }).click()
+    );
     assert.ok(list.total >= 1);
     assert.ok((await column(page, 'Verdict')).every((text) => text === 'keep'));
     await close(page);
@@ -137,7 +197,10 @@ test('the consensus is run by a button, and the list after it is of the new run'
     const before = String(await page.locator('[data-part="run"]').textContent());
     await page.getByRole('button', { name: 'Run the consensus now' }).click();
     await page.getByText('Done.').waitFor({ timeout: 60_000 });
-    await page.waitForFunction((old) => document.querySelector('[data-part="run"]')?.textContent !== old, before);
+    await page.waitForFunction(
+        (old) => document.querySelector('[data-part="run"]')?.textContent !== old,
+        before
+    );
     await close(page);
 });
 
@@ -161,7 +224,10 @@ test('the record says what is not known yet, and what the candidates are not', a
     await page.goto('/record');
     await page.getByText('No dips', { exact: true }).waitFor();
     assert.match(String(await page.locator('[data-part="skill"]').textContent()), /^Not known yet/);
-    assert.match(String(await page.locator('[data-part="caution"]').textContent()), /not a confirmed planet/);
+    assert.match(
+        String(await page.locator('[data-part="caution"]').textContent()),
+        /not a confirmed planet/
+    );
     await close(page);
 });
 
@@ -183,7 +249,10 @@ test('a guest chooses a passphrase, asks for credit, signs out, and comes back a
     await enter.getByLabel('Handle').fill(handle);
     await enter.getByLabel('Passphrase').fill('wrong tide on monday');
     await enter.getByRole('button', { name: 'Sign in' }).click();
-    await enter.getByRole('alert').getByText(/passphrase/).waitFor();
+    await enter
+        .getByRole('alert')
+        .getByText(/passphrase/)
+        .waitFor();
     await enter.getByLabel('Passphrase').fill('neap tide on monday');
     await enter.getByRole('button', { name: 'Sign in' }).click();
     await segmentShown(page);
@@ -215,7 +284,10 @@ test('whoever leaves is asked first, and is forgotten then', async () => {
     await enter.getByLabel('Handle').fill(handle);
     await enter.getByLabel('Passphrase').fill('low water at noon');
     await enter.getByRole('button', { name: 'Sign in' }).click();
-    await enter.getByRole('alert').getByText(/passphrase/).waitFor();
+    await enter
+        .getByRole('alert')
+        .getByText(/passphrase/)
+        .waitFor();
     await close(page);
 });
 

@@ -19,7 +19,10 @@ test('every point of the window falls on one column, none from outside', () => {
     const span = { t0: 10, t1: 17 };
     const columns = columnsOf(times, flux, span, 333);
     const inside = times.filter((time) => time >= span.t0 && time <= span.t1).length;
-    assert.equal(columns.points.reduce((sum, points) => sum + points, 0), inside);
+    assert.equal(
+        columns.points.reduce((sum, points) => sum + points, 0),
+        inside
+    );
 });
 
 test('lowest, highest, mean and spread of a column are those of its points', () => {

@@ -8,7 +8,11 @@ import { invent, pack } from '../mock.mjs';
 
 const curve = invent(42, 1325.3, 15, 0.005);
 /** @param {Buffer} buffer */
-const arrayOf = (buffer) => /** @type {ArrayBuffer} */ (buffer.buffer).slice(buffer.byteOffset, buffer.byteOffset + buffer.length);
+const arrayOf = (buffer) =>
+    /** @type {ArrayBuffer} */ (buffer.buffer).slice(
+        buffer.byteOffset,
+        buffer.byteOffset + buffer.length
+    );
 
 function opened() {
     /** @type {string[]} */
@@ -18,9 +22,19 @@ function opened() {
         lease: {
             lease: 'x',
             expires: '',
-            segment: { id: '', starts: curve.starts, ends: curve.ends, points: curve.times.length, time_reference: '', flux: '' },
+            segment: {
+                id: '',
+                starts: curve.starts,
+                ends: curve.ends,
+                points: curve.times.length,
+                time_reference: '',
+                flux: '',
+            },
         },
-        flux: { as_measured: readFlux(arrayOf(pack(curve, false))), trend_removed: readFlux(arrayOf(pack(curve, true))) },
+        flux: {
+            as_measured: readFlux(arrayOf(pack(curve, false))),
+            trend_removed: readFlux(arrayOf(pack(curve, true))),
+        },
     });
     return { model, told };
 }
@@ -60,8 +74,14 @@ test('a box drawn with the trend removed is kept in the flux as measured, and sh
     model.add(drawn);
     const [mark] = model.work.said.marks;
     const at = curve.times.findIndex((time) => time >= 1327.2);
-    assert.ok(Math.abs(mark.high / drawn.high - curve.trend[at]) < 5e-4, `${mark.high} over ${drawn.high} is not ${curve.trend[at]}`);
-    assert.ok(Math.abs(curve.trend[at] - 1) > 1e-4, 'the trend must differ from 1 for this test to mean anything');
+    assert.ok(
+        Math.abs(mark.high / drawn.high - curve.trend[at]) < 5e-4,
+        `${mark.high} over ${drawn.high} is not ${curve.trend[at]}`
+    );
+    assert.ok(
+        Math.abs(curve.trend[at] - 1) > 1e-4,
+        'the trend must differ from 1 for this test to mean anything'
+    );
     const shown = model.shown(mark);
     assert.ok(Math.abs(shown.low - drawn.low) < 1e-9 && Math.abs(shown.high - drawn.high) < 1e-9);
     model.setFluxView('as_measured');
@@ -103,7 +123,10 @@ test('nudging an edge moves that edge only, and presses of one key are undone to
     for (let press = 0; press < 5; press++) model.nudge(before.id, 'ends', 0.1);
     const [after] = model.work.said.marks;
     assert.ok(Math.abs(after.ends - before.ends - 0.5) < 1e-9);
-    assert.deepEqual([after.starts, after.low, after.high], [before.starts, before.low, before.high]);
+    assert.deepEqual(
+        [after.starts, after.low, after.high],
+        [before.starts, before.low, before.high]
+    );
     model.undo();
     assert.deepEqual(model.work.said.marks[0], before);
 });
@@ -120,7 +143,14 @@ test('a stretched flux axis stays while the window moves, until it is fitted aga
 });
 
 test('typed values change what they name: the length moves the end, the depth the floor', () => {
-    const mark = { id: 1, starts: 10, ends: 11, low: 0.99, high: 1, certainty: /** @type {const} */ ('sure') };
+    const mark = {
+        id: 1,
+        starts: 10,
+        ends: 11,
+        low: 0.99,
+        high: 1,
+        certainty: /** @type {const} */ ('sure'),
+    };
     assert.deepEqual(patchOf(mark, 'starts', 10.5, '%'), { starts: 10.5 });
     assert.deepEqual(patchOf(mark, 'length', 12, '%'), { ends: 10.5 });
     assert.equal(patchOf(mark, 'depth', 2, '%').low, 0.98);
@@ -128,9 +158,19 @@ test('typed values change what they name: the length moves the end, the depth th
 });
 
 test('typed values that cannot be are refused with a sentence', () => {
-    const mark = { id: 1, starts: 10, ends: 11, low: 0.99, high: 1, certainty: /** @type {const} */ ('sure') };
+    const mark = {
+        id: 1,
+        starts: 10,
+        ends: 11,
+        low: 0.99,
+        high: 1,
+        certainty: /** @type {const} */ ('sure'),
+    };
     const limits = { starts: 5, ends: 15, marksMost: 50, leastDays: 0.01 };
-    const why = (/** @type {'starts' | 'ends' | 'length' | 'depth'} */ field, /** @type {number} */ value) => refusal(mark, field, value, limits);
+    const why = (
+        /** @type {'starts' | 'ends' | 'length' | 'depth'} */ field,
+        /** @type {number} */ value
+    ) => refusal(mark, field, value, limits);
     assert.match(why('starts', NaN), /not a number/);
     assert.match(why('starts', 11.5), /before it ends/);
     assert.match(why('ends', 9), /after it starts/);

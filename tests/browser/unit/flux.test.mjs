@@ -3,8 +3,16 @@ import test from 'node:test';
 import { FluxError, gaps, readFlux, usualStep } from '../../../web/flux.js';
 import { randomFrom } from '../mock.mjs';
 
-/** A body by the documented layout, written here byte by byte. @param {number[]} days @param {number[]} offsets */
-function body(days, offsets, { n = days.length, magic = 'EBF1', reference = 2000, median = 5, noise = 0.25 } = {}) {
+/**
+ * A body by the documented layout, written here byte by byte.
+ * @param {number[]} days
+ * @param {number[]} offsets
+ */
+function body(
+    days,
+    offsets,
+    { n = days.length, magic = 'EBF1', reference = 2000, median = 5, noise = 0.25 } = {}
+) {
     const bytes = new Uint8Array(32 + 4 * (days.length + offsets.length));
     const data = new DataView(bytes.buffer);
     [...magic].forEach((letter, at) => data.setUint8(at, letter.charCodeAt(0)));
@@ -47,14 +55,20 @@ for (const [what, bytes] of /** @type {[string, ArrayBuffer][]} */ ([
     ['an endless flux', body([0, 1], [0, -Infinity])],
 ]))
     test(`a body that is ${what} is refused with a sentence`, () => {
-        assert.throws(() => readFlux(bytes), (error) => error instanceof FluxError && /^This light curve cannot be shown: .*\.$/.test(error.message));
+        assert.throws(
+            () => readFlux(bytes),
+            (error) =>
+                error instanceof FluxError &&
+                /^This light curve cannot be shown: .*\.$/.test(error.message)
+        );
     });
 
 test('bytes at random are read or refused, and nothing else happens', () => {
     const random = randomFrom(1);
     for (let round = 0; round < 2000; round++) {
         const bytes = new Uint8Array(body([0, 1, 2], [0, 0, 0]));
-        for (let flips = 0; flips < 4; flips++) bytes[Math.floor(random() * bytes.length)] = Math.floor(random() * 256);
+        for (let flips = 0; flips < 4; flips++)
+            bytes[Math.floor(random() * bytes.length)] = Math.floor(random() * 256);
         try {
             const flux = readFlux(bytes.buffer);
             assert.ok([...flux.times, ...flux.flux].every(Number.isFinite));

@@ -8,7 +8,8 @@ const view = { t0: 100, t1: 110, f0: 0.9, f1: 1.1 };
 const bounds = { t0: 100, t1: 110 };
 
 /** @param {number} one @param {number} other */
-const near = (one, other, within = 1e-9) => assert.ok(Math.abs(one - other) <= within, `${one} is not ${other}`);
+const near = (one, other, within = 1e-9) =>
+    assert.ok(Math.abs(one - other) <= within, `${one} is not ${other}`);
 
 test('a place on the paper and its time and flux are each other’s inverse', () => {
     near(geometry.timeToX(view, plot, 105), 150);
@@ -40,14 +41,21 @@ test('a window never leaves the segment, nor gets shorter than the least', () =>
 });
 
 test('a window’s edge is dragged no nearer to the other than the least', () => {
-    assert.deepEqual(geometry.spanEdge({ t0: 102, t1: 104 }, bounds, 't0', 109, 0.5), { t0: 103.5, t1: 104 });
-    assert.deepEqual(geometry.spanEdge({ t0: 102, t1: 104 }, bounds, 't1', 200, 0.5), { t0: 102, t1: 110 });
+    assert.deepEqual(geometry.spanEdge({ t0: 102, t1: 104 }, bounds, 't0', 109, 0.5), {
+        t0: 103.5,
+        t1: 104,
+    });
+    assert.deepEqual(geometry.spanEdge({ t0: 102, t1: 104 }, bounds, 't1', 200, 0.5), {
+        t0: 102,
+        t1: 110,
+    });
 });
 
 test('what lies under two fingers stays under them', () => {
     const span = { t0: 102, t1: 108 };
     const moved = geometry.spanPinch(span, [0.25, 0.5], [0.2, 0.7], bounds, 0.1);
-    const under = (/** @type {{t0: number, t1: number}} */ of, /** @type {number} */ share) => of.t0 + share * (of.t1 - of.t0);
+    const under = (/** @type {{t0: number, t1: number}} */ of, /** @type {number} */ share) =>
+        of.t0 + share * (of.t1 - of.t0);
     near(under(moved, 0.2), under(span, 0.25));
     near(under(moved, 0.7), under(span, 0.5));
 });
@@ -80,10 +88,16 @@ test('a window without points still has a flux axis', () => {
 });
 
 test('the marks of an axis are round numbers within it', () => {
-    assert.deepEqual(geometry.ticks(1325.3, 1340.3, 8).values, [1326, 1328, 1330, 1332, 1334, 1336, 1338, 1340]);
+    assert.deepEqual(
+        geometry.ticks(1325.3, 1340.3, 8).values,
+        [1326, 1328, 1330, 1332, 1334, 1336, 1338, 1340]
+    );
     const fine = geometry.ticks(0.9931, 0.9969, 4);
     assert.equal(fine.decimals, 3);
-    assert.deepEqual(fine.values.map((value) => value.toFixed(3)), ['0.994', '0.995', '0.996']);
+    assert.deepEqual(
+        fine.values.map((value) => value.toFixed(3)),
+        ['0.994', '0.995', '0.996']
+    );
     assert.deepEqual(geometry.ticks(5, 5, 4).values, []);
 });
 
@@ -101,7 +115,8 @@ test('edges, corners and the inside of a box are told apart', () => {
     const box = { starts: 102, ends: 108, low: 0.95, high: 1.05 };
     const [left, right] = [90, 210];
     const [top, bottom] = [35, 85];
-    const at = (/** @type {number} */ x, /** @type {number} */ y) => geometry.partUnder(view, plot, box, x, y, 8);
+    const at = (/** @type {number} */ x, /** @type {number} */ y) =>
+        geometry.partUnder(view, plot, box, x, y, 8);
     assert.deepEqual(at(150, 60), { time: null, flux: null });
     assert.deepEqual(at(left - 5, 60), { time: 'starts', flux: null });
     assert.deepEqual(at(right + 5, 60), { time: 'ends', flux: null });
@@ -113,7 +128,10 @@ test('edges, corners and the inside of a box are told apart', () => {
 test('a box narrower than a finger can still be moved by its middle', () => {
     const box = { starts: 105, ends: 105.6, low: 0.95, high: 1.05 };
     assert.deepEqual(geometry.partUnder(view, plot, box, 156, 60, 24), { time: null, flux: null });
-    assert.deepEqual(geometry.partUnder(view, plot, box, 151, 60, 24), { time: 'starts', flux: null });
+    assert.deepEqual(geometry.partUnder(view, plot, box, 151, 60, 24), {
+        time: 'starts',
+        flux: null,
+    });
 });
 
 test('a box that is moved keeps its size and stays in the segment', () => {
@@ -127,8 +145,11 @@ test('a box that is moved keeps its size and stays in the segment', () => {
 
 test('an edge that is dragged past the other stops before it', () => {
     const box = { starts: 102, ends: 103, low: 0.9, high: 1 };
-    const drag = (/** @type {geometry.Part} */ part, /** @type {number} */ days, /** @type {number} */ flux) =>
-        geometry.boxDrag(box, part, days, flux, bounds, 0.01);
+    const drag = (
+        /** @type {geometry.Part} */ part,
+        /** @type {number} */ days,
+        /** @type {number} */ flux
+    ) => geometry.boxDrag(box, part, days, flux, bounds, 0.01);
     near(drag({ time: 'starts', flux: null }, 5, 0).starts, 102.99);
     near(drag({ time: 'ends', flux: null }, -5, 0).ends, 102.01);
     near(drag({ time: null, flux: 'low' }, 0, 1).low, 1);
@@ -136,8 +157,14 @@ test('an edge that is dragged past the other stops before it', () => {
 });
 
 test('a box drawn from right to left and upwards is the same box', () => {
-    const [one, other] = [{ time: 104, flux: 0.9 }, { time: 102, flux: 1 }];
-    assert.deepEqual(geometry.boxBetween(one, other, bounds, 0.01), geometry.boxBetween(other, one, bounds, 0.01));
+    const [one, other] = [
+        { time: 104, flux: 0.9 },
+        { time: 102, flux: 1 },
+    ];
+    assert.deepEqual(
+        geometry.boxBetween(one, other, bounds, 0.01),
+        geometry.boxBetween(other, one, bounds, 0.01)
+    );
 });
 
 test('a box begun on the very end of the segment has its least length within it', () => {
@@ -155,7 +182,10 @@ test('a box given by its times reaches from the level beside it to the floor of 
 });
 
 test('a box given by its times where there are no points is flat on the level beside it', () => {
-    assert.deepEqual(geometry.heightsFor([1, 2, 8, 9], [0.5, 0.5, 0.5, 0.5], 4, 6), { low: 0.5, high: 0.5 });
+    assert.deepEqual(geometry.heightsFor([1, 2, 8, 9], [0.5, 0.5, 0.5, 0.5], 4, 6), {
+        low: 0.5,
+        high: 0.5,
+    });
     assert.deepEqual(geometry.heightsFor([], [], 4, 6), { low: 1, high: 1 });
 });
 

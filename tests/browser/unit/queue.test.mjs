@@ -16,7 +16,8 @@ const item = (key, person = 1) => ({
     body: { lease: key },
     segment: { starts: 1, ends: 2, time_reference: '' },
 });
-const problem = (/** @type {number} */ status, /** @type {number | null} */ wait = null) => new Problem(status, 'x', `Status ${status}.`, [], wait);
+const problem = (/** @type {number} */ status, /** @type {number | null} */ wait = null) =>
+    new Problem(status, 'x', `Status ${status}.`, [], wait);
 const settle = () => new Promise((resolve) => setImmediate(resolve));
 
 /** A queue whose clock, storage and server are in the test's hand. @param {Waiting[]} [kept] */
@@ -24,7 +25,11 @@ function bench(kept = []) {
     const shelf = new Map(kept.map((one) => [one.key, one]));
     /** @type {{run: () => void, ms: number}[]} */
     const timers = [];
-    const seen = { sent: /** @type {string[]} */ ([]), tried: /** @type {string[]} */ ([]), refused: /** @type {string[]} */ ([]) };
+    const seen = {
+        sent: /** @type {string[]} */ ([]),
+        tried: /** @type {string[]} */ ([]),
+        refused: /** @type {string[]} */ ([]),
+    };
     const world = {
         shelf,
         timers,
@@ -86,7 +91,11 @@ test('a review is on the shelf before its answer, and off it after', async () =>
     assert.equal(slow.state().waiting.length, 0);
 });
 
-/** The same shelf with a server that answers when told. @param {ReturnType<typeof bench>} world @param {(resolve: (value: any) => void) => void} tell */
+/**
+ * The same shelf with a server that answers when told.
+ * @param {ReturnType<typeof bench>} world
+ * @param {(resolve: (value: any) => void) => void} tell
+ */
 function makeSlow(world, tell) {
     const queue = makeQueue({
         storage: {
@@ -204,7 +213,11 @@ test('a browser that keeps nothing still sends, and says that it keeps nothing',
 test('a review added during sending is sent too', async () => {
     const world = bench();
     world.queue.setPerson(1);
-    await Promise.all([world.queue.add(item('k1')), world.queue.add(item('k2')), world.queue.add(item('k3'))]);
+    await Promise.all([
+        world.queue.add(item('k1')),
+        world.queue.add(item('k2')),
+        world.queue.add(item('k3')),
+    ]);
     for (let round = 0; round < 6; round++) await settle();
     assert.deepEqual(world.seen.sent, ['k1', 'k2', 'k3']);
     assert.equal(world.seen.tried.length, 3);
@@ -237,8 +250,11 @@ test('Retry-After is read as seconds and as a date, and nonsense as none', () =>
 });
 
 test('a key can be made where there is no randomUUID, and each is another', () => {
-    const source = /** @type {any} */ ({ getRandomValues: webcrypto.getRandomValues.bind(webcrypto) });
+    const source = /** @type {any} */ ({
+        getRandomValues: webcrypto.getRandomValues.bind(webcrypto),
+    });
     const keys = new Set(Array.from({ length: 1000 }, () => newKey(source)));
     assert.equal(keys.size, 1000);
-    for (const key of keys) assert.match(key, /^[0-9a-f]{8}-[0-9a-f]{4}-4[0-9a-f]{3}-[89ab][0-9a-f]{3}-[0-9a-f]{12}$/);
+    for (const key of keys)
+        assert.match(key, /^[0-9a-f]{8}-[0-9a-f]{4}-4[0-9a-f]{3}-[89ab][0-9a-f]{3}-[0-9a-f]{12}$/);
 });

@@ -3,7 +3,13 @@ import test from 'node:test';
 import { makeStopwatch } from '../../../web/stopwatch.js';
 import { makeSupply } from '../../../web/supply.js';
 
-const flux = { reference: 0, medianFlux: 1, noise: 0, times: new Float64Array(0), flux: new Float64Array(0) };
+const flux = {
+    reference: 0,
+    medianFlux: 1,
+    noise: 0,
+    times: new Float64Array(0),
+    flux: new Float64Array(0),
+};
 
 /** @param {{leases?: number, minutes?: number}} [options] */
 function bench({ leases = 99, minutes = 15 } = {}) {

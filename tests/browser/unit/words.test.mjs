@@ -24,7 +24,8 @@ test('numbers are read as people type them, and nothing else is a number', () =>
     assert.equal(format.typed('1330,5'), 1330.5);
     assert.equal(format.typed('−2'), -2);
     assert.equal(format.typed('1e-3'), 0.001);
-    for (const text of ['', '.', 'abc', '1.2.3', '0x10', 'Infinity', '1330.5 d']) assert.ok(Number.isNaN(format.typed(text)), text);
+    for (const text of ['', '.', 'abc', '1.2.3', '0x10', 'Infinity', '1330.5 d'])
+        assert.ok(Number.isNaN(format.typed(text)), text);
 });
 
 test('no probability reads as certain', () => {
@@ -40,7 +41,11 @@ test('a depth reads in percent and in ppm', () => {
 
 test('skill is one sentence with its interval, or not known yet', () => {
     assert.match(skillSentence(null), /^Not known yet/);
-    const rate = (/** @type {number} */ value, /** @type {number} */ low, /** @type {number} */ high) => ({ value, low, high });
+    const rate = (
+        /** @type {number} */ value,
+        /** @type {number} */ low,
+        /** @type {number} */ high
+    ) => ({ value, low, high });
     const text = skillSentence({ hit: rate(0.71, 0.52, 0.85), chance: rate(0.08, 0.02, 0.2) });
     assert.equal(
         text,
@@ -51,22 +56,44 @@ test('skill is one sentence with its interval, or not known yet', () => {
 });
 
 test('a mark reads with its times, length and depth', () => {
-    assert.equal(markSentence({ starts: 1330, ends: 1330.25, low: 0.99, high: 1, certainty: 'unsure' }), '1330.0000 to 1330.2500 (6.00\u00a0h, 1.00\u00a0% deep, unsure)');
-    assert.equal(asideSentence(['break', 'keeps_changing'], true), 'a break in the data; keeps changing; came late, still taken');
+    assert.equal(
+        markSentence({ starts: 1330, ends: 1330.25, low: 0.99, high: 1, certainty: 'unsure' }),
+        '1330.0000 to 1330.2500 (6.00\u00a0h, 1.00\u00a0% deep, unsure)'
+    );
+    assert.equal(
+        asideSentence(['break', 'keeps_changing'], true),
+        'a break in the data; keeps changing; came late, still taken'
+    );
 });
 
 test('a control says what had been put there and whether it was found', () => {
-    const dips = [{ starts: 10, ends: 10.5, found: true }, { starts: 12, ends: 12.5, found: false }];
+    const dips = [
+        { starts: 10, ends: 10.5, found: true },
+        { starts: 12, ends: 12.5, found: false },
+    ];
     assert.equal(
         controlSentence({ kind: 'injected', dips }, 1),
         'The segment before this one was a control: 2 model dips had been put into it, from day 10.0000 to 10.5000 (you found it); from day 12.0000 to 12.5000 (you did not mark it).'
     );
-    assert.match(controlSentence({ kind: 'inverted', dips: [] }, 0), /turned upside down.*You said that there was none\.$/);
-    assert.match(controlSentence({ kind: 'inverted', dips: [] }, 2), /Your marks are on something that is no dip\.$/);
+    assert.match(
+        controlSentence({ kind: 'inverted', dips: [] }, 0),
+        /turned upside down.*You said that there was none\.$/
+    );
+    assert.match(
+        controlSentence({ kind: 'inverted', dips: [] }, 2),
+        /Your marks are on something that is no dip\.$/
+    );
 });
 
 test('the outbox says honestly what it waits for', () => {
-    const state = { waiting: [/** @type {any} */ ({})], sending: false, signInNeeded: false, nextTry: 5000, trouble: 'Gone.', kept: true };
+    const state = {
+        waiting: [/** @type {any} */ ({})],
+        sending: false,
+        signInNeeded: false,
+        nextTry: 5000,
+        trouble: 'Gone.',
+        kept: true,
+    };
     assert.equal(outboxSentence(state, 0), 'Gone. Trying again in 5 seconds.');
     assert.match(outboxSentence({ ...state, signInNeeded: true }, 0), /sign in again/);
     assert.match(outboxSentence({ ...state, kept: false }, 0), /leave this page open/);
@@ -74,10 +101,15 @@ test('the outbox says honestly what it waits for', () => {
 });
 
 test('a question and its address are each other’s inverse, and nonsense is left out', () => {
-    const question = questions.questionOf('?min_probability=0.5&star=RB-0001&sort=snr&cursor=3.50.ab');
+    const question = questions.questionOf(
+        '?min_probability=0.5&star=RB-0001&sort=snr&cursor=3.50.ab'
+    );
     assert.deepEqual(questions.questionOf(questions.addressOf(question).split('?')[1]), question);
     assert.equal(questions.addressOf(questions.questionOf('?sort=nonsense&foo=1')), '/candidates');
-    assert.equal(questions.tableOf(question, 'csv'), '/api/v1/candidates?min_probability=0.5&star=RB-0001&sort=snr&format=csv');
+    assert.equal(
+        questions.tableOf(question, 'csv'),
+        '/api/v1/candidates?min_probability=0.5&star=RB-0001&sort=snr&format=csv'
+    );
 });
 
 test('a click on a heading sorts the useful way first, and the other way next', () => {
@@ -89,7 +121,10 @@ test('a click on a heading sorts the useful way first, and the other way next', 
 });
 
 test('flags are sentences, and one that is new is shown by its name', () => {
-    assert.deepEqual(flagSentences('near_gap odd_thing'), ['An edge of the dip lies within half its duration of a gap.', 'odd_thing']);
+    assert.deepEqual(flagSentences('near_gap odd_thing'), [
+        'An edge of the dip lies within half its duration of a gap.',
+        'odd_thing',
+    ]);
     assert.deepEqual(flagSentences(null), []);
 });
 
@@ -102,7 +137,11 @@ test('the terms of the odds are named with their signs', () => {
 });
 
 test('a thumbnail leaves out what is no number and takes the trend away', () => {
-    const { times, flux } = flattened({ times: [1, 2, null, 4], flux: [1.1, null, 1, 0.9], trend: [1.1, 1, 1, 0.9] });
+    const { times, flux } = flattened({
+        times: [1, 2, null, 4],
+        flux: [1.1, null, 1, 0.9],
+        trend: [1.1, 1, 1, 0.9],
+    });
     assert.deepEqual([...times], [1, 4]);
     assert.deepEqual([...flux], [1, 1]);
 });
