@@ -148,6 +148,9 @@ bool http_query_integer(struct http_exchange *exchange, const char *name, int64_
                         int64_t most, int64_t fallback, int64_t *out);
 bool http_query_real(struct http_exchange *exchange, const char *name, double least, double most,
                      double fallback, double *out);
+/* Has the query no field but these (ended by NULL)? False: answered 422, naming it, so that a
+ * misspelt filter does not pass for none. */
+bool http_query_only(struct http_exchange *exchange, const char *const *names);
 /* Does the Accept header (or its absence) allow this media type, and which of several is preferred?
  */
 int http_accept_best(struct http_exchange *exchange, const char *const *types, size_t count);

@@ -53,6 +53,12 @@ bool api_call_number(struct api_call *call, const char *part, const char *missin
            base_fail(&call->error, BASE_NOT_FOUND, "%s", missing);
 }
 
+bool api_call_query(struct api_call *call, const char *const *names)
+{
+    call->answered = !http_query_only(call->exchange, names);
+    return !call->answered;
+}
+
 bool api_call_limit(struct api_call *call, size_t *limit)
 {
     int64_t asked;
@@ -64,8 +70,9 @@ bool api_call_limit(struct api_call *call, size_t *limit)
 
 bool api_call_page(struct api_call *call, struct api_page *out)
 {
+    static const char *const names[] = {"limit", "cursor", NULL};
     *out = (struct api_page){0};
-    if (!api_call_limit(call, &out->limit))
+    if (!api_call_query(call, names) || !api_call_limit(call, &out->limit))
         return false;
     const char *cursor = http_query(call->exchange, "cursor");
     return cursor == NULL || api_number_read(cursor, &out->after) ||

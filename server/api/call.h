@@ -60,7 +60,10 @@ bool api_number_read(const char *text, int64_t *out);
  * sentence. */
 bool api_call_number(struct api_call *call, const char *part, const char *missing, int64_t *out);
 
-/* ?limit and ?cursor of a list by ascending or descending id. `after` is 0 at its beginning. */
+/* The query has no field but these (ended by NULL). */
+bool api_call_query(struct api_call *call, const char *const *names);
+/* ?limit and ?cursor, and nothing else, of a list by ascending or descending id. `after` is 0 at
+ * its beginning. */
 #define API_LIMIT_DEFAULT 100
 #define API_LIMIT_MOST 1000
 struct api_page {

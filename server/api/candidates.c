@@ -120,10 +120,13 @@ static bool read_cursor(struct api_call *call, struct candidates_question *quest
 
 static bool read_question(struct api_call *call, struct candidates_question *out)
 {
+    static const char *const names[] = {
+        "min_probability", "star",   "batch",  "verdict", "run", "sort",
+        "limit",           "cursor", "format", NULL};
     *out = (struct candidates_question){0};
-    bool ok = read_run(call, &out->run) && read_sort(call, &out->query) &&
-              read_filters(call, &out->query) && api_call_limit(call, &out->query.limit) &&
-              read_cursor(call, out);
+    bool ok = api_call_query(call, names) && read_run(call, &out->run) &&
+              read_sort(call, &out->query) && read_filters(call, &out->query) &&
+              api_call_limit(call, &out->query.limit) && read_cursor(call, out);
     out->query.run = out->run.id;
     return ok;
 }
@@ -236,10 +239,12 @@ static enum http_result show(struct http_exchange *exchange, void *context)
     struct store_candidate_mark *marks = NULL;
     struct store_verdict *verdicts = NULL;
     size_t mark_count = 0, verdict_count = 0;
+    static const char *const names[] = {"run", NULL};
     int64_t id;
     bool ok =
         api_call_begin(&call, exchange, context) &&
-        api_call_number(&call, "id", "There is no such candidate.", &id) && read_run(&call, &run) &&
+        api_call_number(&call, "id", "There is no such candidate.", &id) &&
+        api_call_query(&call, names) && read_run(&call, &run) &&
         store_candidate_read(call.store, call.arena, run.id, id, &candidate, &call.error) &&
         store_candidate_marks(call.store, call.arena, run.id, id, &marks, &mark_count,
                               &call.error) &&

@@ -21,7 +21,8 @@ static enum http_result list(struct http_exchange *exchange, void *context)
     struct store_run known;
     size_t count = 0;
     int64_t run = 0;
-    if (!api_call_begin(&call, exchange, context))
+    static const char *const names[] = {"run", NULL};
+    if (!api_call_begin(&call, exchange, context) || !api_call_query(&call, names))
         return api_call_end(&call);
     call.answered = !http_query_integer(exchange, "run", 1, INT64_MAX, 0, &run);
     bool ok = !call.answered;

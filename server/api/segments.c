@@ -60,7 +60,9 @@ static bool read_key(struct api_call *call, struct flux_key *out)
 {
     if (!read_id(call->exchange, &out->public_id))
         return base_fail(&call->error, BASE_NOT_FOUND, "There is no such segment.");
-    return read_view(call, &out->view) && read_form(call, &out->form);
+    static const char *const names[] = {"view", NULL};
+    return api_call_query(call, names) && read_view(call, &out->view) &&
+           read_form(call, &out->form);
 }
 
 /* The science team sees everything; others what they hold or have reviewed. A lease that is sent

@@ -99,7 +99,10 @@ struct stretch {
 
 static bool read_stretch(struct api_call *call, struct stretch *out)
 {
+    static const char *const names[] = {"from", "to", NULL};
     *out = (struct stretch){0};
+    if (!api_call_query(call, names))
+        return false;
     call->answered = !http_query_real(call->exchange, "from", -1e9, 1e9, -INFINITY, &out->from) ||
                      !http_query_real(call->exchange, "to", -1e9, 1e9, INFINITY, &out->to);
     return !call->answered &&

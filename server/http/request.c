@@ -188,6 +188,22 @@ bool http_body_json(struct http_exchange *exchange, json_t **out)
     return true;
 }
 
+bool http_query_only(struct http_exchange *exchange, const char *const *names)
+{
+    for (size_t i = 0; i < exchange->target.field_count; i++) {
+        const char *field = exchange->target.fields[i].name;
+        size_t k = 0;
+        while (names[k] != NULL && strcmp(names[k], field) != 0)
+            k++;
+        if (names[k] == NULL) {
+            (void)http_answer_problem(exchange, "invalid", field,
+                                      "The query has no field of this name here.");
+            return false;
+        }
+    }
+    return true;
+}
+
 bool http_query_integer(struct http_exchange *exchange, const char *name, int64_t least,
                         int64_t most, int64_t fallback, int64_t *out)
 {

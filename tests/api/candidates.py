@@ -82,7 +82,7 @@ def filters(server, whole):
     check('run picks a run', science.get(f'/api/v1/candidates?run={whole["run"]["run"]}').json == whole)
     for query in ('min_probability=2', 'min_probability=-0.1', 'min_probability=nan', 'min_probability=x', 'sort=colour',
                   'sort=', 'sort=--snr', 'verdict=maybe', 'run=0', 'run=x', 'limit=0', 'limit=1001', 'format=fits',
-                  'cursor=x', 'cursor=1.1.0000000000000000', 'cursor=1.0.', 'cursor=-1'):
+                  'cursor=x', 'cursor=1.1.0000000000000000', 'cursor=1.0.', 'cursor=-1', 'min_probabilty=0.5', 'x=y'):
         answer = science.get(f'/api/v1/candidates?{query}')
         check(f'{query} is refused, naming it', answer.status == 422 and answer.fields == [query.split('=')[0]], answer)
     check('a run that there is not: 404', science.get('/api/v1/candidates?run=99').status == 404)

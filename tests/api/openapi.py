@@ -102,8 +102,21 @@ def bodies(server):
             check(f'{name} needs a body', answer.status == 400, answer)
 
 
+def queries(server):
+    """A misspelt filter must not pass for none."""
+    admin = server.admin
+    for method, template, path, operation in operations():
+        known = [p['name'] for p in operation.get('parameters', []) if p['in'] == 'query']
+        if known:
+            wrong = known[0] + 's'
+            answer = admin.ask(method, f'{path}?{wrong}=1')
+            check(f'{method} {template} refuses the query field {wrong}, naming it',
+                  answer.status == 422 and answer.fields == [wrong] or answer.status == 404 and '{' in template, answer)
+
+
 def check_all(server):
     itself(server)
     rights(server)
     cookies(server)
     bodies(server)
+    queries(server)
