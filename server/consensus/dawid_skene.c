@@ -150,7 +150,7 @@ static double classify(const struct fit *fit, double *logs)
         }
         for (size_t k = 0; k < classes; k++)
             out->class_probability[i * classes + k] /= sum;
-        total += most + log(sum);
+        total += most + log(fmax(sum, 1e-300));
     }
     return total;
 }
