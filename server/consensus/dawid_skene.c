@@ -204,9 +204,10 @@ bool dawid_skene_fit(const struct dawid_skene_label *labels, size_t n, size_t it
     output->proportion = calloc(classes, sizeof(double));
     output->confusion = calloc(people * classes * label_kinds + 1, sizeof(double));
     double *logs = calloc(classes, sizeof *logs);
-    bool ok = (fit.labels != NULL && fit.pooled != NULL && output->class_probability != NULL &&
-               output->proportion != NULL && output->confusion != NULL && logs != NULL) ||
-              base_fail(error, BASE_MEMORY, "There is no memory for the reviewers' rates.");
+    bool ok = fit.labels != NULL && fit.pooled != NULL && output->class_probability != NULL &&
+              output->proportion != NULL && output->confusion != NULL && logs != NULL;
+    if (!ok)
+        (void)base_fail(error, BASE_MEMORY, "There is no memory for the reviewers' rates.");
     if (ok && n > 0)
         memcpy(fit.labels, labels, n * sizeof *labels);
     ok = ok && in_range(&fit, error) &&

@@ -364,8 +364,9 @@ bool group_marks_counted(const struct consensus_mark *marks, size_t n, size_t *s
     whole.cluster = malloc((n + 1) * sizeof *whole.cluster);
     whole.label = malloc((n + 1) * sizeof *whole.label);
     *groups = 0;
-    bool ok = (whole.keys != NULL && whole.cluster != NULL && whole.label != NULL) ||
-              base_fail(error, BASE_MEMORY, "There is no memory to group marks.");
+    bool ok = whole.keys != NULL && whole.cluster != NULL && whole.label != NULL;
+    if (!ok)
+        (void)base_fail(error, BASE_MEMORY, "There is no memory to group marks.");
     for (size_t i = 0; ok && i < n; i++)
         whole.keys[i] = (struct key){&marks[i], i};
     if (ok) {
