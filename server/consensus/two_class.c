@@ -193,8 +193,9 @@ bool consensus_fit_two_class(const struct consensus_input *input,
     double *rates = calloc(6 * input->people + input->item_count + 1, sizeof *rates);
     output->answers = calloc(input->item_count + 1, sizeof *output->answers);
     output->skills = calloc(input->people + 1, sizeof *output->skills);
-    bool ok = (rates != NULL && output->answers != NULL && output->skills != NULL) ||
-              base_fail(error, BASE_MEMORY, "There is no memory for the consensus.");
+    bool ok = rates != NULL && output->answers != NULL && output->skills != NULL;
+    if (!ok)
+        (void)base_fail(error, BASE_MEMORY, "There is no memory for the consensus.");
     if (ok) {
         size_t n = input->people;
         struct fit fit = {.input = input,
