@@ -34,7 +34,7 @@ bool cli_campaign_open(struct cli_campaign *opened, const char *database, bool m
     *opened = (struct cli_campaign){.log = {.fd = STDERR_FILENO, .least = BASE_LOG_WARNING}};
     long processors = sysconf(_SC_NPROCESSORS_ONLN);
     unsigned threads = processors < 1 ? 1 : processors > 64 ? 64 : (unsigned)processors;
-    const struct store_options options = {.readers = threads + 6, .must_exist = must_exist};
+    const struct store_options options = {.readers = threads + 12, .must_exist = must_exist};
     bool ok = store_open(database, &options, &opened->store, error) &&
               base_pool_open(&opened->pool, threads, 1024, error) &&
               campaign_open(opened->store, opened->pool, &opened->log, &opened->campaign, error);
