@@ -14,6 +14,8 @@
 #include "ebbmark/consensus_model.h"
 
 enum { FIT_DIP, FIT_LURE, FIT_NOTHING, FIT_CLASSES };
+#define FIT_BETA_SD 2.0 /* of the priors of beta and gamma */
+#define FIT_GAMMA_SD 0.5
 #define FIT_TAU_LEAST 0.05
 #define FIT_TAU_MOST 3.0
 #define FIT_SIDES 2 /* the classes in which somebody was shown something: dip, lure */
@@ -32,6 +34,8 @@ struct fit_pair {
     double slope[FIT_SIDES]; /* d of the expected log-likelihood by the logit; while a group is
                                 summed, e^-logit stands here */
     double curve[FIT_SIDES]; /* minus the second derivative, >= 0 */
+    double known[FIT_SIDES]; /* the curve, less what it is not known whether the group is of the
+                                class, nor how hard it is */
     double alone;            /* P(nothing, by chance) where marked */
     double together;         /* P(nothing, marked together) where marked */
     double invited;          /* marks made together, over the weight of all lookers */
@@ -59,7 +63,7 @@ struct fit_group {
 struct fit_sums {
     double objective;                                                      /* without the priors */
     double slope[FIT_SIDES], slope_curve[FIT_SIDES];                       /* by beta, gamma */
-    double all_slope[FIT_SIDES], all_curve[FIT_SIDES], curve_x[FIT_SIDES]; /* by all logits alike */
+    double all_curve[FIT_SIDES], curve_x[FIT_SIDES], all_known[FIT_SIDES]; /* by all logits alike */
     double tau[FIT_SIDES], tau_curve[FIT_SIDES];
     double spread, centres; /* for kappa */
     double sure[FIT_CLASSES], marks[FIT_CLASSES];
@@ -73,13 +77,19 @@ struct fit_sums {
 
 /* Sums over reviewers. */
 struct fit_people_sums {
-    double prior;                                                     /* log of the priors */
-    double deviation[FIT_SIDES], square[FIT_SIDES], known[FIT_SIDES]; /* for means and spreads */
-    double chance_mean; /* sum of expected chance rates */
-    double chance_days; /* sum of chance rate x days */
+    double lean_slope[FIT_SIDES], lean_curve[FIT_SIDES]; /* by logits that follow the growth */
+    double prior;                                        /* log of the priors */
+    double deviation[FIT_SIDES], square[FIT_SIDES], known[FIT_SIDES],
+        firm[FIT_SIDES]; /* for means and spreads */
+    double chance_mean;  /* sum of expected chance rates */
+    double chance_days;  /* sum of chance rate x days */
 };
 
 #define FIT_PEOPLE_A_BLOCK 1024
+/* How far each logit of a reviewer follows the looks rather than the population, in [0, 1]. */
+struct fit_lean {
+    double of[FIT_SIDES];
+};
 struct fit_block {
     size_t first, count;
 };
@@ -91,6 +101,7 @@ struct fit {
     struct consensus_person *people;
     struct consensus_person *people_before, *people_next; /* for stepping back */
     struct consensus_common common_before, common_next;
+    struct fit_lean *leans; /* people */
     struct fit_group *groups;
     struct fit_pair *pairs;
     size_t *first_of_person, *of_person; /* the looks of each person, in order */
@@ -101,7 +112,7 @@ struct fit {
     struct fit_sums sums;
     struct fit_people_sums people_sum;
     union fit_nodes scale[FIT_SIDES]; /* e^(-tau u) */
-    double shift[FIT_SIDES];          /* of every logit in the next step, with the growth's step */
+    bool still;                       /* the logits stay, in the population's step */
     bool observed; /* for intervals: slopes and curves are of the observed likelihood, see below */
 };
 
@@ -113,9 +124,13 @@ extern const union fit_nodes fit_node_u, fit_node_weight;
 /* Sum over all groups under the present numbers: posteriors, derivatives, objective. */
 void fit_sums(struct fit *fit);
 
-/* From the sums to people_next and common_next: one Newton step for each logit; what is common to
- * the population moves too when `population`. */
-void fit_step(struct fit *fit, bool population);
+/* From the sums to people_next and common_next: one Newton step of the logits and of what all
+ * groups share; the population stays. */
+void fit_step(struct fit *fit);
+
+/* The population's step; all else stays. The two do not move at once, because each would answer to
+ * where the other was, and they could go round in a circle. */
+void fit_step_population(struct fit *fit);
 
 /* log of the priors at the present numbers. */
 double fit_prior(struct fit *fit);

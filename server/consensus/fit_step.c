@@ -11,9 +11,7 @@
 #define SPREAD 0.8
 #define SPREAD_WEIGHT 4.0
 #define BETA 2.0
-#define BETA_SD 2.0
 #define GAMMA 0.0
-#define GAMMA_SD 0.5
 #define TAU 0.5
 #define TAU_SD 0.5
 #define KAPPA 0.25
@@ -26,7 +24,9 @@
 #define X_SHARE_LEAST 1e-6
 #define RATE_WEIGHT 0.5
 #define TOGETHER_WEIGHT 0.1
-#define STEP_MOST 1.5 /* of a logit, a round */
+#define FIRM_LEAST 0.5  /* of the reviewers holds the population's mean back */
+#define KNOWN_LEAST 0.3 /* of the curvature is taken for known at least */
+#define STEP_MOST 1.5   /* of a logit, a round */
 static const double x_mean[FIT_CLASSES] = {0.0, -0.5, -1.9};
 static const double x_sd[FIT_CLASSES] = {0.7, 0.6, 0.3};
 
@@ -111,8 +111,8 @@ double fit_prior(struct fit *fit)
     add_blocks(fit);
     double n = (double)fit->input->people, days = fmax(fit->input->days_total, 1.0);
     return fit->people_sum.prior - n * log(common->hit_sd * common->lure_sd) -
-           0.5 * square((common->beta - BETA) / BETA_SD) -
-           0.5 * square((common->gamma - GAMMA) / GAMMA_SD) -
+           0.5 * square((common->beta - BETA) / FIT_BETA_SD) -
+           0.5 * square((common->gamma - GAMMA) / FIT_GAMMA_SD) -
            0.5 * square((common->tau_dip - TAU) / TAU_SD) -
            0.5 * square((common->tau_lure - TAU) / TAU_SD) -
            (common->dips_per_d + common->lures_per_d + common->together_per_d) * days -
@@ -124,13 +124,15 @@ static void person_step(struct fit *fit, size_t j, struct fit_people_sums *sums)
 {
     const struct consensus_common *common = &fit->common;
     struct consensus_person *next = &fit->people_next[j];
-    double slope[FIT_SIDES] = {0.0, 0.0}, curve[FIT_SIDES] = {0.0, 0.0}, chance = 0.0;
+    double slope[FIT_SIDES] = {0.0, 0.0}, curve[FIT_SIDES] = {0.0, 0.0};
+    double known[FIT_SIDES] = {0.0, 0.0}, chance = 0.0;
     double together = 1.0, invited = 1.0;
     for (size_t k = fit->first_of_person[j]; k < fit->first_of_person[j + 1]; k++) {
         const struct fit_pair *pair = &fit->pairs[fit->of_person[k]];
         for (int side = 0; side < FIT_SIDES; side++) {
             slope[side] += pair->slope[side];
             curve[side] += pair->curve[side];
+            known[side] += pair->known[side];
         }
         chance += pair->alone;
         together += pair->together;
@@ -142,18 +144,22 @@ static void person_step(struct fit *fit, size_t j, struct fit_people_sums *sums)
         double *logit = side == FIT_DIP ? &next->hit_logit : &next->lure_logit;
         double at = side == FIT_DIP ? fit->people[j].hit_logit : fit->people[j].lure_logit;
         double pull = 1.0 / square(spread[side]);
-        *logit =
-            at +
-            limited((slope[side] - (at - mean[side]) * pull) / (curve[side] + pull), STEP_MOST) +
-            fit->shift[side];
+        double all = curve[side] + pull, up = slope[side] - (at - mean[side]) * pull;
+        double lean = curve[side] / all;
+        *logit = fit->still ? at : at + limited(up / all, STEP_MOST);
+        fit->leans[j].of[side] = lean;
+        sums->lean_slope[side] += lean * up;
+        sums->lean_curve[side] += lean * curve[side];
+        sums->firm[side] += lean;
         sums->deviation[side] += *logit - mean[side];
         sums->square[side] += square(*logit - mean[side]);
-        sums->known[side] += curve[side] / (curve[side] + pull);
+        known[side] = fmax(known[side], KNOWN_LEAST * curve[side]);
+        sums->known[side] += known[side] / (known[side] + pull);
     }
     double days = fmax(fit->input->days_looked[j], 0.0);
     double rate = (chance + 1.0) / (days + 1.0 / common->chance_per_d);
-    next->log_chance_per_d = log(rate);
-    next->log_together = log(together / invited);
+    next->log_chance_per_d = fit->still ? fit->people[j].log_chance_per_d : log(rate);
+    next->log_together = fit->still ? fit->people[j].log_together : log(together / invited);
     sums->chance_mean += rate;
 }
 
@@ -170,14 +176,16 @@ static void block_step(void *context, size_t b)
 /* Mean and spread of a logit over the reviewers: where the estimates' spread and their own variance
  * together leave them unchanged (Laplace EM), reached in longer steps than EM's own: those who
  * were hardly seen do not hold it back. */
-static void population_step(const struct fit_people_sums *sums, int side, double expected,
+static void population_step(const struct fit_people_sums *sums, int side, double n, double expected,
                             double *mean, double *spread)
 {
     double variance = square(*spread);
     double step = (sums->deviation[side] / variance + (expected - *mean) / square(MEAN_SD)) /
-                  (sums->known[side] / variance + 1.0 / square(MEAN_SD));
-    *spread = sqrt((sums->square[side] + SPREAD_WEIGHT * square(SPREAD)) /
-                   (sums->known[side] + SPREAD_WEIGHT));
+                  (fmax(sums->firm[side], FIRM_LEAST * n) / variance + 1.0 / square(MEAN_SD));
+    double whole =
+        (sums->square[side] + SPREAD_WEIGHT * square(SPREAD)) / (sums->known[side] + SPREAD_WEIGHT);
+    /* Half the way: the logits follow in the next rounds, and what is known of them changes. */
+    *spread = sqrt(0.5 * (variance + fmin(whole, 4.0 * variance)));
     *mean += limited(step, STEP_MOST);
 }
 
@@ -204,8 +212,8 @@ static void population_all_step(const struct fit *fit, struct consensus_common *
 {
     const struct fit_people_sums *people = &fit->people_sum;
     double days = fmax(fit->input->days_total, 1.0), n = (double)fit->input->people;
-    population_step(people, FIT_DIP, HIT_MEAN, &next->hit_mean, &next->hit_sd);
-    population_step(people, FIT_LURE, LURE_MEAN, &next->lure_mean, &next->lure_sd);
+    population_step(people, FIT_DIP, n, HIT_MEAN, &next->hit_mean, &next->hit_sd);
+    population_step(people, FIT_LURE, n, LURE_MEAN, &next->lure_mean, &next->lure_sd);
     next->dips_per_d = (fit->sums.all[FIT_DIP] + RATE_WEIGHT) / days;
     next->lures_per_d = (fit->sums.all[FIT_LURE] + RATE_WEIGHT) / days;
     next->together_per_d = (fit->sums.together + TOGETHER_WEIGHT) / days;
@@ -213,29 +221,41 @@ static void population_all_step(const struct fit *fit, struct consensus_common *
     densities_step(&fit->sums, next);
 }
 
-/* Newton step of beta or gamma. Growth is counted from where most is known, so that all logits
- * shift against it: otherwise the two would chase each other along a narrow ridge. */
-static double growth_step(struct fit *fit, int side, double expected, double sd)
+/* Newton step of beta or gamma together with the logits, which hang together: counted from where
+ * the most is known of x, each logit gives way as far as it follows the looks. (The exact step
+ * would have such a middle for each reviewer.) */
+static void growth_step(struct fit *fit, int side, double expected, double sd, double *growth)
 {
     const struct fit_sums *sums = &fit->sums;
-    double pull = 1.0 / square(sd), now = fit_growth(&fit->common, side);
+    double pull = 1.0 / square(sd);
     double middle = sums->curve_x[side] / (sums->all_curve[side] + 1e-9);
-    double slope = sums->slope[side] - middle * sums->all_slope[side] - (now - expected) * pull;
-    double curve = sums->slope_curve[side] - middle * sums->curve_x[side];
+    double slope =
+        sums->slope[side] - middle * fit->people_sum.lean_slope[side] - (*growth - expected) * pull;
+    double curve = sums->slope_curve[side] - square(middle) * fit->people_sum.lean_curve[side];
     double step = limited(slope / (fmax(curve, 0.0) + pull), STEP_MOST);
-    fit->shift[side] = -step * middle;
-    return now + step;
+    *growth += step;
+    for (size_t j = 0; j < fit->input->people; j++) {
+        struct consensus_person *next = &fit->people_next[j];
+        *(side == FIT_DIP ? &next->hit_logit : &next->lure_logit) -=
+            middle * step * fit->leans[j].of[side];
+    }
 }
 
-void fit_step(struct fit *fit, bool population)
+static void step_people(struct fit *fit)
+{
+    base_pool_for(fit->settings->pool, fit->people_block_count, block_step, fit);
+    add_blocks(fit);
+}
+
+void fit_step(struct fit *fit)
 {
     const struct fit_sums *sums = &fit->sums;
     struct consensus_common *next = &fit->common_next;
     *next = fit->common;
-    next->beta = growth_step(fit, FIT_DIP, BETA, BETA_SD);
-    next->gamma = growth_step(fit, FIT_LURE, GAMMA, GAMMA_SD);
-    base_pool_for(fit->settings->pool, fit->people_block_count, block_step, fit);
-    add_blocks(fit);
+    fit->still = false;
+    step_people(fit);
+    growth_step(fit, FIT_DIP, BETA, FIT_BETA_SD, &next->beta);
+    growth_step(fit, FIT_LURE, GAMMA, FIT_GAMMA_SD, &next->gamma);
     double *tau[FIT_SIDES] = {&next->tau_dip, &next->tau_lure};
     for (int side = 0; side < FIT_SIDES; side++) {
         double pull = 1.0 / square(TAU_SD);
@@ -245,6 +265,12 @@ void fit_step(struct fit *fit, bool population)
     }
     next->kappa =
         sqrt((sums->spread + KAPPA_WEIGHT * square(KAPPA)) / (sums->centres + KAPPA_WEIGHT));
-    if (population)
-        population_all_step(fit, next);
+}
+
+void fit_step_population(struct fit *fit)
+{
+    fit->common_next = fit->common;
+    fit->still = true;
+    step_people(fit);
+    population_all_step(fit, &fit->common_next);
 }

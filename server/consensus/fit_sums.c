@@ -190,13 +190,16 @@ static void side_derive(const struct fit *fit, size_t g, int side, const struct 
         double expected = once[0] + once[1], variance = expected - (twice[0] + twice[1]);
         pairs[k].slope[side] = p * y - expected;
         pairs[k].curve[side] = fmax(variance, 0.0);
+        /* The variance of the slope over classes and nodes is taken off (Louis 1982, J. R. Stat.
+         * Soc. B 44, 226). */
+        double squares = twice[0] + twice[1] + (looks[k].marked ? p - 2.0 * expected : 0.0);
+        pairs[k].known[side] = variance - squares + pairs[k].slope[side] * pairs[k].slope[side];
         slope += pairs[k].slope[side];
         curve += pairs[k].curve[side];
     }
     double x = fit_x(fit, group, side);
     sums->slope[side] += x * slope;
     sums->slope_curve[side] += x * x * curve;
-    sums->all_slope[side] += slope;
     sums->all_curve[side] += curve;
     sums->curve_x[side] += x * curve;
     for (int m = 0; m < FIT_NODES; m++) {

@@ -11,7 +11,7 @@
 #include "input.h"
 
 #define LOOKS_A_BLOCK 4096
-#define STRETCH_MOST 3.0   /* how many times its step a round may go while that pays */
+#define STRETCH_MOST 1.5   /* how many times its step a round may go while that pays */
 #define STRETCH_GROWTH 1.2 /* from one round to the next */
 #define STEP_LEAST (1.0 / 1024.0)
 
@@ -30,6 +30,7 @@ static void fit_free(struct fit *fit)
     free(fit->people);
     free(fit->people_before);
     free(fit->people_next);
+    free(fit->leans);
     free(fit->groups);
     free(fit->pairs);
     free(fit->first_of_person);
@@ -66,6 +67,7 @@ static bool fit_open(struct fit *fit, struct base_error *error)
     fit->people = calloc(people, sizeof *fit->people);
     fit->people_before = calloc(people, sizeof *fit->people_before);
     fit->people_next = calloc(people, sizeof *fit->people_next);
+    fit->leans = calloc(people, sizeof *fit->leans);
     fit->groups = calloc(input->item_count + 1, sizeof *fit->groups);
     fit->pairs = calloc(looks, sizeof *fit->pairs);
     fit->first_of_person = calloc(people + 1, sizeof *fit->first_of_person);
@@ -74,9 +76,9 @@ static bool fit_open(struct fit *fit, struct base_error *error)
     fit->block_sums = calloc(fit->block_count + 1, sizeof *fit->block_sums);
     fit->people_sums = calloc(fit->people_block_count + 1, sizeof *fit->people_sums);
     bool ok = fit->people != NULL && fit->people_before != NULL && fit->people_next != NULL &&
-              fit->groups != NULL && fit->pairs != NULL && fit->first_of_person != NULL &&
-              fit->of_person != NULL && fit->blocks != NULL && fit->block_sums != NULL &&
-              fit->people_sums != NULL;
+              fit->leans != NULL && fit->groups != NULL && fit->pairs != NULL &&
+              fit->first_of_person != NULL && fit->of_person != NULL && fit->blocks != NULL &&
+              fit->block_sums != NULL && fit->people_sums != NULL;
     if (ok)
         (void)cut_blocks(input, fit->blocks);
     return ok || base_fail(error, BASE_MEMORY, "There is no memory for the consensus.");
@@ -210,37 +212,45 @@ static void keep(struct fit *fit)
     memcpy(fit->people_before, fit->people, fit->input->people * sizeof *fit->people);
 }
 
-/* Rounds go in pairs: the population moves after the second of a pair, so that the objective of the
- * second can be held against the first's. If it fell, the step was too long and is taken again,
- * shorter. */
+/* Sums at the present numbers, and the penalised log-likelihood. */
+static double judge(struct fit *fit)
+{
+    fit_sums(fit);
+    return fit->sums.objective + fit_prior(fit);
+}
+
+/* Rounds go in pairs: after the first all but the population moves, so that the objective of the
+ * second can be held against the first's; if it fell, the step was too long and is taken again,
+ * shorter. After the second the population moves. */
 static void iterate(struct fit *fit, struct consensus_output *out)
 {
     const struct consensus_settings *settings = fit->settings;
-    double before = -INFINITY, two_before = -INFINITY, far = 1.0;
-    bool comparable = false;
+    double before = -INFINITY, last = -INFINITY, far = 1.0;
     while (out->rounds < settings->rounds_max && !out->converged) {
         bool second = settings->hold || out->rounds % 2 == 1;
-        fit_sums(fit);
-        double now = fit->sums.objective + fit_prior(fit);
-        while (comparable && second && now < before - 1e-13 * fabs(before) && far > STEP_LEAST) {
+        double now = judge(fit);
+        while (second && now < before - 1e-13 * fabs(before) && far > STEP_LEAST) {
             far = far > 1.0 ? 1.0 : 0.5 * far;
             go(fit, far);
-            fit_sums(fit);
-            now = fit->sums.objective + fit_prior(fit);
+            now = judge(fit);
         }
-        comparable = true;
         out->rounds++;
         out->log_likelihood = now;
         if (settings->watch != NULL)
             settings->watch(settings->watch_context, out->rounds, now);
-        double change = fabs(now - (settings->hold ? before : two_before));
+        double change = fabs(now - last);
         out->converged = second && change <= settings->tolerance * fmax(fabs(now), 1.0);
-        two_before = before;
+        last = second ? now : last;
         before = now;
         keep(fit);
-        fit_step(fit, second && !settings->hold);
-        far = far < 1.0 ? 1.0 : fmin(far * STRETCH_GROWTH, STRETCH_MOST);
-        go(fit, far);
+        if (second && !settings->hold) {
+            fit_step_population(fit);
+            go(fit, 1.0);
+        } else {
+            fit_step(fit);
+            far = far < 1.0 ? 1.0 : fmin(far * STRETCH_GROWTH, STRETCH_MOST);
+            go(fit, far);
+        }
     }
     /* The answers are of the numbers that were judged, not of the step after them. */
     fit->common = fit->common_before;
