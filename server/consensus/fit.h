@@ -22,6 +22,9 @@ enum { FIT_DIP, FIT_LURE, FIT_NOTHING, FIT_CLASSES };
 
 /* Gauss-Hermite nodes, seven and one of no weight, so that they go in pairs. */
 #define FIT_NODES 8
+/* So many factors of at most 1 + e^(30 + 3 x 3.75), the largest that a look can give, stay below
+ * 1e308. */
+#define FIT_POWERS 16
 typedef double fit_pack __attribute__((vector_size(16)));
 #define FIT_PACKS (FIT_NODES / 2)
 union fit_nodes {
@@ -86,6 +89,11 @@ struct fit_people_sums {
 };
 
 #define FIT_PEOPLE_A_BLOCK 1024
+/* One reviewer's numbers as a round uses them. */
+struct fit_factor {
+    double logit[FIT_SIDES], odds[FIT_SIDES]; /* odds: e^-logit */
+    double log_together, together;
+};
 /* How far each logit of a reviewer follows the looks rather than the population, in [0, 1]. */
 struct fit_lean {
     double of[FIT_SIDES];
@@ -101,7 +109,8 @@ struct fit {
     struct consensus_person *people;
     struct consensus_person *people_before, *people_next; /* for stepping back */
     struct consensus_common common_before, common_next;
-    struct fit_lean *leans; /* people */
+    struct fit_lean *leans;     /* people */
+    struct fit_factor *factors; /* people */
     struct fit_group *groups;
     struct fit_pair *pairs;
     size_t *first_of_person, *of_person; /* the looks of each person, in order */
@@ -111,8 +120,9 @@ struct fit {
     struct fit_people_sums *people_sums;
     struct fit_sums sums;
     struct fit_people_sums people_sum;
-    union fit_nodes scale[FIT_SIDES]; /* e^(-tau u) */
-    bool still;                       /* the logits stay, in the population's step */
+    union fit_nodes scale[FIT_SIDES];                  /* E = e^(-tau u) */
+    union fit_nodes powers[FIT_SIDES][FIT_POWERS + 1]; /* its powers */
+    bool still;    /* the logits stay, in the population's step */
     bool observed; /* for intervals: slopes and curves are of the observed likelihood, see below */
 };
 

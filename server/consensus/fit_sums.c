@@ -4,7 +4,6 @@
 #include "fit.h"
 
 #define LOGIT_MOST 30.0 /* beyond it a logit changes nothing */
-#define PAIRS_A_LOG 16  /* so many factors of at most 1 + e^(30 + 3 x 3.75) stay below 1e308 */
 #define ONE_MORE 0.3    /* P(one more mark | marked together) */
 #define SEEN_LEAST 0.05 /* a group stands for at most twenty like it */
 
@@ -50,9 +49,24 @@ static double weigh_nodes(const double *logs, union fit_nodes *share)
     return most + log(sum);
 }
 
+/* The same from products that did not need logarithms; powers are E^r. */
+static double weigh_products(const union fit_nodes *product, const union fit_nodes *powers,
+                             union fit_nodes *share)
+{
+    fit_pack sum = both(0.0);
+    for (int i = 0; i < FIT_PACKS; i++) {
+        share->pack[i] = fit_node_weight.pack[i] * powers->pack[i] / product->pack[i];
+        sum += share->pack[i];
+    }
+    double whole = sum[0] + sum[1];
+    for (int i = 0; i < FIT_PACKS; i++)
+        share->pack[i] /= both(whole);
+    return log(whole);
+}
+
 /* Integrate the looks at group g over u. With t = e^-logit, P(marked) at a node is 1 / (1 + t E)
- * and P(not marked) t E / (1 + t E), where E = e^(-tau u) is the same for all groups of a round:
- * one exponential a look. */
+ * and P(not marked) t E / (1 + t E), where E = e^(-tau u) is the same for all groups of a round;
+ * and t is a factor of the reviewer times one of the group, so that a look costs no exponential. */
 static void side_sum(const struct fit *fit, size_t g, int side, struct side *out)
 {
     const struct consensus_item *item = &fit->input->items[g];
@@ -60,32 +74,43 @@ static void side_sum(const struct fit *fit, size_t g, int side, struct side *out
     struct fit_pair *pairs = fit->pairs + item->first_look;
     struct fit_group *group = &fit->groups[g];
     double grown = fit_growth(&fit->common, side) * fit_x(fit, group, side);
-    double shared[FIT_NODES] = {0.0}, marked = 0.0, unmarked = 0.0;
+    double shrunk = exp(-grown), shared[FIT_NODES] = {0.0}, sums[2] = {0.0, 0.0};
+    size_t n = item->looks, marks = (size_t)group->marks;
     union fit_nodes product;
     for (int i = 0; i < FIT_PACKS; i++)
         product.pack[i] = both(1.0);
-    for (size_t k = 0; k < item->looks; k++) {
-        const struct consensus_person *person = &fit->people[looks[k].person];
-        double logit = (side == FIT_DIP ? person->hit_logit : person->lure_logit) + grown;
-        logit = logit > LOGIT_MOST ? LOGIT_MOST : logit < -LOGIT_MOST ? -LOGIT_MOST : logit;
-        double t = exp(-logit);
+    for (size_t k = 0; k < n; k++) {
+        const struct fit_factor *factor = &fit->factors[looks[k].person];
+        double logit = factor->logit[side] + grown, t = factor->odds[side] * shrunk;
+        if (logit > LOGIT_MOST || logit < -LOGIT_MOST) {
+            logit = logit > 0.0 ? LOGIT_MOST : -LOGIT_MOST;
+            t = exp(-logit);
+        }
         pairs[k].slope[side] = t;
-        *(looks[k].marked ? &marked : &unmarked) += logit;
+        sums[looks[k].marked != 0] += logit;
         for (int i = 0; i < FIT_PACKS; i++)
             product.pack[i] *= both(1.0) + both(t) * fit->scale[side].pack[i];
-        if (k % PAIRS_A_LOG == PAIRS_A_LOG - 1)
+        if (k % FIT_POWERS == FIT_POWERS - 1 && n > FIT_POWERS)
             take_logs(&product, shared);
     }
-    take_logs(&product, shared);
-    double tau = side == FIT_DIP ? fit->common.tau_dip : fit->common.tau_lure;
-    double seen[FIT_NODES], unseen[FIT_NODES], n = (double)item->looks;
-    for (int m = 0; m < FIT_NODES; m++) {
-        double lift = tau * fit_node_u.at[m];
-        seen[m] = -shared[m] - unmarked - (n - group->marks) * lift;
-        unseen[m] = -shared[m] - unmarked - marked - n * lift;
+    if (n <= FIT_POWERS) {
+        const union fit_nodes *powers = fit->powers[side];
+        group->log_side[side] = weigh_products(&product, &powers[n - marks], &out->share) - sums[0];
+        group->unseen[side] =
+            exp(weigh_products(&product, &powers[n], &out->unseen) - sums[0] - sums[1]);
+    } else {
+        take_logs(&product, shared);
+        double tau = side == FIT_DIP ? fit->common.tau_dip : fit->common.tau_lure;
+        double seen[FIT_NODES], unseen[FIT_NODES];
+        for (int m = 0; m < FIT_NODES; m++) {
+            double lift = tau * fit_node_u.at[m];
+            seen[m] = -shared[m] - sums[0] - (double)(n - marks) * lift;
+            unseen[m] = -shared[m] - sums[0] - sums[1] - (double)n * lift;
+        }
+        group->log_side[side] = weigh_nodes(seen, &out->share);
+        group->unseen[side] = exp(weigh_nodes(unseen, &out->unseen));
     }
-    group->log_side[side] = weigh_nodes(seen, &out->share);
-    group->unseen[side] = exp(fmin(weigh_nodes(unseen, &out->unseen), 0.0));
+    group->unseen[side] = group->unseen[side] > 1.0 ? 1.0 : group->unseen[side];
 }
 
 static bool allows(const struct consensus_item *item, int class)
@@ -106,9 +131,9 @@ static double log_together(const struct fit *fit, size_t g)
     if (group->marks < 2.0)
         return -INFINITY;
     for (size_t k = 0; k < item->looks; k++) {
-        double log_weight = fit->people[looks[k].person].log_together;
-        group->company += exp(log_weight);
-        marked += looks[k].marked ? log_weight : 0.0;
+        const struct fit_factor *factor = &fit->factors[looks[k].person];
+        group->company += factor->together;
+        marked += looks[k].marked ? factor->log_together : 0.0;
     }
     return log(fit->common.together_per_d) + log(1.0 - ONE_MORE) +
            (group->marks - 2.0) * log(ONE_MORE) + group->log_orders + marked -
@@ -189,7 +214,7 @@ static void side_derive(const struct fit *fit, size_t g, int side, const struct 
         }
         double expected = once[0] + once[1], variance = expected - (twice[0] + twice[1]);
         pairs[k].slope[side] = p * y - expected;
-        pairs[k].curve[side] = fmax(variance, 0.0);
+        pairs[k].curve[side] = variance > 0.0 ? variance : 0.0;
         /* The variance of the slope over classes and nodes is taken off (Louis 1982, J. R. Stat.
          * Soc. B 44, 226). */
         double squares = twice[0] + twice[1] + (looks[k].marked ? p - 2.0 * expected : 0.0);
@@ -307,12 +332,39 @@ static void block_sum(void *context, size_t b)
         group_sum(fit, fit->blocks[b].first + i, sums);
 }
 
+static void block_factors(void *context, size_t b)
+{
+    struct fit *fit = context;
+    for (size_t j = b * FIT_PEOPLE_A_BLOCK;
+         j < (b + 1) * FIT_PEOPLE_A_BLOCK && j < fit->input->people; j++) {
+        const struct consensus_person *person = &fit->people[j];
+        struct fit_factor *factor = &fit->factors[j];
+        factor->logit[FIT_DIP] = person->hit_logit;
+        factor->logit[FIT_LURE] = person->lure_logit;
+        factor->odds[FIT_DIP] = exp(-person->hit_logit);
+        factor->odds[FIT_LURE] = exp(-person->lure_logit);
+        factor->log_together = person->log_together;
+        factor->together = exp(person->log_together);
+    }
+}
+
+/* E of each node and its powers. */
+static void set_scales(struct fit *fit)
+{
+    const double tau[FIT_SIDES] = {fit->common.tau_dip, fit->common.tau_lure};
+    for (int side = 0; side < FIT_SIDES; side++)
+        for (int m = 0; m < FIT_NODES; m++) {
+            double lift = -tau[side] * fit_node_u.at[m];
+            fit->scale[side].at[m] = exp(lift);
+            for (int r = 0; r <= FIT_POWERS; r++)
+                fit->powers[side][r].at[m] = exp(lift * r);
+        }
+}
+
 void fit_sums(struct fit *fit)
 {
-    for (int m = 0; m < FIT_NODES; m++) {
-        fit->scale[FIT_DIP].at[m] = exp(-fit->common.tau_dip * fit_node_u.at[m]);
-        fit->scale[FIT_LURE].at[m] = exp(-fit->common.tau_lure * fit_node_u.at[m]);
-    }
+    set_scales(fit);
+    base_pool_for(fit->settings->pool, fit->people_block_count, block_factors, fit);
     base_pool_for(fit->settings->pool, fit->block_count, block_sum, fit);
     memset(&fit->sums, 0, sizeof fit->sums);
     double *total = (double *)&fit->sums;

@@ -31,6 +31,7 @@ static void fit_free(struct fit *fit)
     free(fit->people_before);
     free(fit->people_next);
     free(fit->leans);
+    free(fit->factors);
     free(fit->groups);
     free(fit->pairs);
     free(fit->first_of_person);
@@ -68,6 +69,7 @@ static bool fit_open(struct fit *fit, struct base_error *error)
     fit->people_before = calloc(people, sizeof *fit->people_before);
     fit->people_next = calloc(people, sizeof *fit->people_next);
     fit->leans = calloc(people, sizeof *fit->leans);
+    fit->factors = calloc(people, sizeof *fit->factors);
     fit->groups = calloc(input->item_count + 1, sizeof *fit->groups);
     fit->pairs = calloc(looks, sizeof *fit->pairs);
     fit->first_of_person = calloc(people + 1, sizeof *fit->first_of_person);
@@ -76,9 +78,9 @@ static bool fit_open(struct fit *fit, struct base_error *error)
     fit->block_sums = calloc(fit->block_count + 1, sizeof *fit->block_sums);
     fit->people_sums = calloc(fit->people_block_count + 1, sizeof *fit->people_sums);
     bool ok = fit->people != NULL && fit->people_before != NULL && fit->people_next != NULL &&
-              fit->leans != NULL && fit->groups != NULL && fit->pairs != NULL &&
-              fit->first_of_person != NULL && fit->of_person != NULL && fit->blocks != NULL &&
-              fit->block_sums != NULL && fit->people_sums != NULL;
+              fit->leans != NULL && fit->factors != NULL && fit->groups != NULL &&
+              fit->pairs != NULL && fit->first_of_person != NULL && fit->of_person != NULL &&
+              fit->blocks != NULL && fit->block_sums != NULL && fit->people_sums != NULL;
     if (ok)
         (void)cut_blocks(input, fit->blocks);
     return ok || base_fail(error, BASE_MEMORY, "There is no memory for the consensus.");

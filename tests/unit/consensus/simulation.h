@@ -29,6 +29,7 @@ struct sim_settings {
     double lure_effect_sd;          /* logit, per lure */
     double random, never, in_pairs; /* shares of the reviewers */
     double chance;                  /* median chance marks a segment */
+    bool even;                      /* all are equally active */
     bool certainty;                 /* marks are sure or not; else all are sure */
 };
 
@@ -486,7 +487,7 @@ static inline void sim_people_draw(struct simulation *sim, const struct sim_sett
     size_t in_pairs = (size_t)(settings->in_pairs * (double)n + 0.5) / 2 * 2;
     for (size_t i = 0; i < n; i++) {
         struct sim_person *person = &sim->people[place[i]];
-        person->activity = pow((double)place[i] + 1.0, -0.9);
+        person->activity = settings->even ? 1.0 : pow((double)place[i] + 1.0, -0.9);
         person->partner = -1;
         person->a = 0.6 + 0.8 * sim_normal(state);
         person->b = -1.3 + 0.8 * sim_normal(state) - 0.5 * (person->a - 0.6);
