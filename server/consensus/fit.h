@@ -20,13 +20,13 @@ enum { FIT_DIP, FIT_LURE, FIT_NOTHING, FIT_CLASSES };
 #define FIT_TAU_MOST 3.0
 #define FIT_SIDES 2 /* the classes in which somebody was shown something: dip, lure */
 
-/* Gauss-Hermite nodes, seven and one of no weight, so that they go in pairs. */
+/* Gauss-Hermite nodes, seven and one of no weight, so that they go in fours. */
 #define FIT_NODES 8
 /* So many factors of at most 1 + e^(30 + 3 x 3.75), the largest that a look can give, stay below
  * 1e308. */
 #define FIT_POWERS 16
-typedef double fit_pack __attribute__((vector_size(16)));
-#define FIT_PACKS (FIT_NODES / 2)
+typedef double fit_pack __attribute__((vector_size(32)));
+#define FIT_PACKS (FIT_NODES / 4)
 union fit_nodes {
     double at[FIT_NODES];
     fit_pack pack[FIT_PACKS];
@@ -102,6 +102,10 @@ struct fit_block {
     size_t first, count;
 };
 
+/* Logarithms of what is common, taken once a round. */
+struct fit_logs {
+    double dips, lures, together, kappa, sure[FIT_CLASSES], unsure[FIT_CLASSES];
+};
 struct fit {
     const struct consensus_input *input;
     const struct consensus_settings *settings;
@@ -120,6 +124,7 @@ struct fit {
     struct fit_people_sums *people_sums;
     struct fit_sums sums;
     struct fit_people_sums people_sum;
+    struct fit_logs logs;
     union fit_nodes scale[FIT_SIDES];                  /* E = e^(-tau u) */
     union fit_nodes powers[FIT_SIDES][FIT_POWERS + 1]; /* its powers */
     bool still;    /* the logits stay, in the population's step */
@@ -190,7 +195,7 @@ static inline double fit_log_time(const struct fit *fit, const struct fit_group 
     double kappa = fit->common.kappa;
     if (group->marks == 0.0)
         return 0.0;
-    return group->log_time - (group->marks - 1.0) * log(kappa) -
+    return group->log_time - (group->marks - 1.0) * fit->logs.kappa -
            0.5 * group->spread / (kappa * kappa);
 }
 

@@ -3,8 +3,9 @@
 
 #include "fit.h"
 
-#define LOGIT_MOST 30.0 /* beyond it a logit changes nothing */
-#define ONE_MORE 0.3    /* P(one more mark | marked together) */
+#define LOGIT_MOST 30.0                    /* beyond it a logit changes nothing */
+#define LOG_ONE_MORE (-1.2039728043259361) /* of 0.3 */
+#define LOG_NO_MORE (-0.35667494393873245)
 #define SEEN_LEAST 0.05 /* a group stands for at most twenty like it */
 
 /* Nodes and weights of the integral over a normal density, as published in every table. */
@@ -21,10 +22,17 @@ struct side {
     union fit_nodes unseen; /* given that nobody marked */
 };
 
-static fit_pack both(double value)
-{
-    return (fit_pack){value, value};
-}
+/* The inner loops are compiled twice, with and without wide registers; the machine picks. Each
+ * operation is on each number by itself and none is fused, so the bits are the same. */
+#if defined(__x86_64__) && defined(__GNUC__) && !defined(__clang__) &&                             \
+    !defined(__SANITIZE_ADDRESS__)
+#define WIDE __attribute__((flatten, target_clones("avx2", "default")))
+#else
+#define WIDE
+#endif
+
+#define BOTH(value) ((fit_pack){(value), (value), (value), (value)})
+#define ACROSS(pack) (((pack)[0] + (pack)[1]) + ((pack)[2] + (pack)[3]))
 
 static void take_logs(union fit_nodes *product, double *logs)
 {
@@ -53,14 +61,16 @@ static double weigh_nodes(const double *logs, union fit_nodes *share)
 static double weigh_products(const union fit_nodes *product, const union fit_nodes *powers,
                              union fit_nodes *share)
 {
-    fit_pack sum = both(0.0);
+    fit_pack sum = BOTH(0.0);
+#pragma GCC unroll 2
     for (int i = 0; i < FIT_PACKS; i++) {
         share->pack[i] = fit_node_weight.pack[i] * powers->pack[i] / product->pack[i];
         sum += share->pack[i];
     }
-    double whole = sum[0] + sum[1];
+    double whole = ACROSS(sum);
+#pragma GCC unroll 2
     for (int i = 0; i < FIT_PACKS; i++)
-        share->pack[i] /= both(whole);
+        share->pack[i] /= BOTH(whole);
     return log(whole);
 }
 
@@ -76,9 +86,11 @@ static void side_sum(const struct fit *fit, size_t g, int side, struct side *out
     double grown = fit_growth(&fit->common, side) * fit_x(fit, group, side);
     double shrunk = exp(-grown), shared[FIT_NODES] = {0.0}, sums[2] = {0.0, 0.0};
     size_t n = item->looks, marks = (size_t)group->marks;
+    const union fit_nodes scale = fit->scale[side];
     union fit_nodes product;
+#pragma GCC unroll 2
     for (int i = 0; i < FIT_PACKS; i++)
-        product.pack[i] = both(1.0);
+        product.pack[i] = BOTH(1.0);
     for (size_t k = 0; k < n; k++) {
         const struct fit_factor *factor = &fit->factors[looks[k].person];
         double logit = factor->logit[side] + grown, t = factor->odds[side] * shrunk;
@@ -88,8 +100,9 @@ static void side_sum(const struct fit *fit, size_t g, int side, struct side *out
         }
         pairs[k].slope[side] = t;
         sums[looks[k].marked != 0] += logit;
+#pragma GCC unroll 2
         for (int i = 0; i < FIT_PACKS; i++)
-            product.pack[i] *= both(1.0) + both(t) * fit->scale[side].pack[i];
+            product.pack[i] *= BOTH(1.0) + BOTH(t) * scale.pack[i];
         if (k % FIT_POWERS == FIT_POWERS - 1 && n > FIT_POWERS)
             take_logs(&product, shared);
     }
@@ -135,9 +148,8 @@ static double log_together(const struct fit *fit, size_t g)
         group->company += factor->together;
         marked += looks[k].marked ? factor->log_together : 0.0;
     }
-    return log(fit->common.together_per_d) + log(1.0 - ONE_MORE) +
-           (group->marks - 2.0) * log(ONE_MORE) + group->log_orders + marked -
-           group->marks * log(group->company);
+    return fit->logs.together + LOG_NO_MORE + (group->marks - 2.0) * LOG_ONE_MORE +
+           group->log_orders + marked - group->marks * log(group->company);
 }
 
 /* Joint log-likelihoods of the classes. */
@@ -145,11 +157,10 @@ static void weigh_classes(const struct fit *fit, size_t g)
 {
     const struct consensus_item *item = &fit->input->items[g];
     const struct consensus_look *looks = fit->input->looks + item->first_look;
-    const struct consensus_common *common = &fit->common;
     struct fit_group *group = &fit->groups[g];
     double time = fit_log_time(fit, group);
-    group->log_class[FIT_DIP] = log(common->dips_per_d) + group->log_side[FIT_DIP] + time;
-    group->log_class[FIT_LURE] = log(common->lures_per_d) + group->log_side[FIT_LURE] + time;
+    group->log_class[FIT_DIP] = fit->logs.dips + group->log_side[FIT_DIP] + time;
+    group->log_class[FIT_LURE] = fit->logs.lures + group->log_side[FIT_LURE] + time;
     group->log_alone = 0.0;
     for (size_t k = 0; k < item->looks; k++)
         if (looks[k].marked)
@@ -158,11 +169,11 @@ static void weigh_classes(const struct fit *fit, size_t g)
     group->together = 1.0 / (1.0 + exp(group->log_alone - group->log_together));
     group->log_class[FIT_NOTHING] = fit_log_sum(group->log_alone, group->log_together);
     for (int c = 0; c < FIT_CLASSES; c++)
-        group->log_class[c] += group->sure * log(common->sure[c]) +
-                               (group->marks - group->sure) * log1p(-common->sure[c]) +
+        group->log_class[c] += group->sure * fit->logs.sure[c] +
+                               (group->marks - group->sure) * fit->logs.unsure[c] +
                                fit_log_density(fit, group, c);
     if (group->complete) /* its SNR and its place were chosen, not met with */
-        group->log_class[FIT_DIP] -= log(common->dips_per_d) + fit_log_density(fit, group, FIT_DIP);
+        group->log_class[FIT_DIP] -= fit->logs.dips + fit_log_density(fit, group, FIT_DIP);
     for (int side = 0; side < FIT_SIDES && !group->complete; side++)
         group->log_class[side] -= log(fmax(1.0 - group->unseen[side], SEEN_LEAST));
 }
@@ -195,29 +206,32 @@ static void side_derive(const struct fit *fit, size_t g, int side, const struct 
     struct fit_pair *pairs = fit->pairs + item->first_look;
     const struct fit_group *group = &fit->groups[g];
     double p = group->probability[side], slope = 0.0, curve = 0.0;
+    const union fit_nodes scale = fit->scale[side];
     union fit_nodes real, weight, marked, bent;
+#pragma GCC unroll 2
     for (int i = 0; i < FIT_PACKS; i++) {
-        real.pack[i] = both(p) * nodes->share.pack[i];
-        weight.pack[i] = real.pack[i] + both(like) * nodes->unseen.pack[i];
-        marked.pack[i] = bent.pack[i] = both(0.0);
+        real.pack[i] = BOTH(p) * nodes->share.pack[i];
+        weight.pack[i] = real.pack[i] + BOTH(like) * nodes->unseen.pack[i];
+        marked.pack[i] = bent.pack[i] = BOTH(0.0);
     }
     for (size_t k = 0; k < item->looks; k++) {
-        fit_pack once = both(0.0), twice = both(0.0), t = both(pairs[k].slope[side]);
+        fit_pack once = BOTH(0.0), twice = BOTH(0.0), t = BOTH(pairs[k].slope[side]);
         double y = looks[k].marked;
+#pragma GCC unroll 2
         for (int i = 0; i < FIT_PACKS; i++) {
-            fit_pack rate = both(1.0) / (both(1.0) + t * fit->scale[side].pack[i]);
+            fit_pack rate = BOTH(1.0) / (BOTH(1.0) + t * scale.pack[i]);
             fit_pack weighed = weight.pack[i] * rate;
             once += weighed;
             twice += weighed * rate;
             marked.pack[i] += rate;
             bent.pack[i] += rate - rate * rate;
         }
-        double expected = once[0] + once[1], variance = expected - (twice[0] + twice[1]);
+        double expected = ACROSS(once), squared = ACROSS(twice), variance = expected - squared;
         pairs[k].slope[side] = p * y - expected;
         pairs[k].curve[side] = variance > 0.0 ? variance : 0.0;
         /* The variance of the slope over classes and nodes is taken off (Louis 1982, J. R. Stat.
          * Soc. B 44, 226). */
-        double squares = twice[0] + twice[1] + (looks[k].marked ? p - 2.0 * expected : 0.0);
+        double squares = squared + y * (p - 2.0 * expected);
         pairs[k].known[side] = variance - squares + pairs[k].slope[side] * pairs[k].slope[side];
         slope += pairs[k].slope[side];
         curve += pairs[k].curve[side];
@@ -323,7 +337,7 @@ static void group_sum(struct fit *fit, size_t g, struct fit_sums *sums)
     sum_common(fit, g, sums);
 }
 
-static void block_sum(void *context, size_t b)
+WIDE static void block_sum(void *context, size_t b)
 {
     struct fit *fit = context;
     struct fit_sums *sums = &fit->block_sums[b];
@@ -348,6 +362,19 @@ static void block_factors(void *context, size_t b)
     }
 }
 
+static void set_logs(struct fit *fit)
+{
+    const struct consensus_common *common = &fit->common;
+    fit->logs.dips = log(common->dips_per_d);
+    fit->logs.lures = log(common->lures_per_d);
+    fit->logs.together = log(common->together_per_d);
+    fit->logs.kappa = log(common->kappa);
+    for (int c = 0; c < FIT_CLASSES; c++) {
+        fit->logs.sure[c] = log(common->sure[c]);
+        fit->logs.unsure[c] = log1p(-common->sure[c]);
+    }
+}
+
 /* E of each node and its powers. */
 static void set_scales(struct fit *fit)
 {
@@ -363,6 +390,7 @@ static void set_scales(struct fit *fit)
 
 void fit_sums(struct fit *fit)
 {
+    set_logs(fit);
     set_scales(fit);
     base_pool_for(fit->settings->pool, fit->people_block_count, block_factors, fit);
     base_pool_for(fit->settings->pool, fit->block_count, block_sum, fit);

@@ -4,6 +4,7 @@
  *
  *     consensus time REVIEWS [THREADS]   seconds, rounds and memory of one fit on about so many
  * reviews consensus dump REVIEWS FILE        the same input in plain columns, and our fit of it
+ * with the population held; prints processor seconds a round
  */
 #include <inttypes.h>
 #include <stdio.h>
@@ -14,10 +15,10 @@
 
 #define REVIEWERS_FOR_REVIEWS 100 /* reviews a reviewer, on average */
 
-static double seconds(void)
+static double seconds(clockid_t clock)
 {
     struct timespec now;
-    clock_gettime(CLOCK_MONOTONIC, &now);
+    clock_gettime(clock, &now);
     return (double)now.tv_sec + 1e-9 * (double)now.tv_nsec;
 }
 
@@ -31,7 +32,8 @@ static struct simulation campaign_of(size_t reviews)
     return sim_new(&settings);
 }
 
-static void time_fit(size_t reviews, unsigned threads)
+/* Returns the processor seconds a round. */
+static double time_fit(size_t reviews, unsigned threads)
 {
     struct simulation sim = campaign_of(reviews);
     struct consensus_settings settings = CONSENSUS_SETTINGS_DEFAULT;
@@ -41,21 +43,24 @@ static void time_fit(size_t reviews, unsigned threads)
         fprintf(stderr, "%s\n", error.sentence);
         exit(1);
     }
-    double begun = seconds();
+    double begun = seconds(CLOCK_MONOTONIC), used = seconds(CLOCK_PROCESS_CPUTIME_ID);
     if (!consensus_fit(&sim.input, &settings, &out, &error)) {
         fprintf(stderr, "%s\n", error.sentence);
         exit(1);
     }
-    double took = seconds() - begun;
+    double took = seconds(CLOCK_MONOTONIC) - begun;
+    used = seconds(CLOCK_PROCESS_CPUTIME_ID) - used;
     struct rusage usage;
     getrusage(RUSAGE_SELF, &usage);
-    printf("reviews %zu groups %zu looks %zu threads %u seconds %.3f rounds %u converged %d "
-           "a_round %.4f megabytes %ld\n",
-           sim.reviews, sim.input.item_count, sim.input.look_count, threads, took, out.rounds,
-           out.converged, took / (double)(out.rounds + 2), usage.ru_maxrss / 1024);
+    printf("%zu reviews, %zu groups, %zu looks on them, %u threads: %.1f s (processor %.1f s), "
+           "%u rounds%s, %ld MB\n",
+           sim.reviews, sim.input.item_count, sim.input.look_count, threads, took, used, out.rounds,
+           out.converged ? "" : " (not converged)", usage.ru_maxrss / 1024);
+    used /= (double)out.rounds;
     consensus_output_free(&out);
     base_pool_close(settings.pool);
     sim_free(&sim);
+    return used;
 }
 
 static void dump_fit(FILE *file, const struct simulation *sim, const struct consensus_output *out)
@@ -102,7 +107,11 @@ static int dump(size_t reviews, const char *path)
         settings.hold = 1;
         settings.tolerance = 1e-13;
         settings.rounds_max = 5000;
+        double used = seconds(CLOCK_PROCESS_CPUTIME_ID);
         ok = consensus_fit(&sim.input, &settings, &out, &error);
+        used = seconds(CLOCK_PROCESS_CPUTIME_ID) - used;
+        if (ok)
+            printf("%.9f\n", used / (double)out.rounds);
         consensus_output_free(&free_fit);
     }
     if (ok) {
@@ -119,13 +128,17 @@ static int dump(size_t reviews, const char *path)
 int main(int count, char **arguments)
 {
     size_t reviews = count > 2 ? strtoull(arguments[2], NULL, 10) : 0;
+    if (count == 1) {
+        double small = time_fit(100000, 2), large = time_fit(1000000, 2);
+        printf("ten times the reviews cost %.1f times the processor time a round\n", large / small);
+        return 0;
+    }
     if (count > 2 && reviews >= 1000 && strcmp(arguments[1], "time") == 0) {
-        time_fit(reviews, count > 3 ? (unsigned)strtoul(arguments[3], NULL, 10) : 2);
+        (void)time_fit(reviews, count > 3 ? (unsigned)strtoul(arguments[3], NULL, 10) : 2);
         return 0;
     }
     if (count > 3 && reviews >= 1000 && strcmp(arguments[1], "dump") == 0)
         return dump(reviews, arguments[3]);
-    fputs("Usage: consensus time REVIEWS [THREADS] | consensus dump REVIEWS FILE; 1000 or more.\n",
-          stderr);
+    fputs("Usage: consensus [time REVIEWS [THREADS] | dump REVIEWS FILE]; 1000 or more.\n", stderr);
     return 1;
 }
