@@ -12,10 +12,11 @@
 
 #define GATE_SIGMA 4.0
 #define SIMILAR_SIGMA 3.0
-#define SURE_OF_CYCLE (1.0 / 6.0) /* of a period: the error of a prediction that may still count   \
-                                   */
-#define LN_DEPTHS 6.907755        /* ln 1000 */
-#define LN_DURATIONS 3.401197     /* ln 30 */
+#define SURE_OF_CYCLE                                                                              \
+    (1.0 / 6.0)               /* of a period: the error of a prediction that may still count       \
+                               */
+#define LN_DEPTHS 6.907755    /* ln 1000 */
+#define LN_DURATIONS 3.401197 /* ln 30 */
 #define LN_SQRT_2PI 0.918938533204672742
 #define HASH_START UINT64_C(14695981039346656037) /* FNV-1a */
 #define HASH_PRIME UINT64_C(1099511628211)
@@ -64,40 +65,63 @@ bool linker_is_similar(const struct linkable *a, const struct linkable *b)
            is_near(a->ln_duration, a->duration_sigma, b->ln_duration, b->duration_sigma);
 }
 
-/* Take the item in when it is similar to both of the seed and on the line, at a cycle strictly
- * between the two given ones. */
-static bool try_item(struct linker *linker, struct line_sums *sums, const struct seed *seed,
-                     size_t at, int64_t after, int64_t before)
+void linker_pair(struct linker *linker, size_t first, size_t second)
 {
-    const struct linkable *item = &linker->item[at];
+    linker->friends = 0;
+    for (size_t i = 0; i < linker->count; i++)
+        if (i == first || i == second ||
+            (!linker->item[i].taken && linker_is_similar(&linker->item[i], &linker->item[first]) &&
+             linker_is_similar(&linker->item[i], &linker->item[second])))
+            linker->friend[linker->friends++] = i;
+}
+
+/* Take the item in when it is on the line, at a cycle strictly between the two given ones. */
+static bool try_item(struct linker *linker, struct line_sums *sums, size_t at, int64_t after,
+                     int64_t before)
+{
     int64_t cycle;
-    if (item->taken || !linker_is_similar(item, &linker->item[seed->first]) ||
-        !linker_is_similar(item, &linker->item[seed->second]) || !find_cycle(sums, item, &cycle) ||
-        cycle <= after || cycle >= before)
+    if (!find_cycle(sums, &linker->item[at], &cycle) || cycle <= after || cycle >= before)
         return false;
     linker->in[at] = true;
     linker->cycle_of[at] = cycle;
-    add_to_sums(sums, item, cycle);
+    add_to_sums(sums, &linker->item[at], cycle);
     return true;
 }
 
-static void grow_outwards(struct linker *linker, struct line_sums *sums, const struct seed *seed)
+/* From the friends before place `left` and those from place `right` on, the nearer one first. */
+static void grow_outwards(struct linker *linker, struct line_sums *sums, size_t left, size_t right)
 {
-    size_t low = seed->first, high = seed->second; /* the outermost members */
-    size_t left = low, right = high + 1;           /* items before left and from right are open */
-    while (left > 0 || right < linker->count) {
-        bool to_left = right == linker->count ||
-                       (left > 0 && linker->item[low].mid_d - linker->item[left - 1].mid_d <=
-                                        linker->item[right].mid_d - linker->item[high].mid_d);
+    size_t low = linker->friend[left], high = linker->friend[right - 1]; /* outermost members */
+    while (left > 0 || right < linker->friends) {
+        bool to_left = right == linker->friends;
+        if (left > 0 && !to_left)
+            to_left = linker->item[low].mid_d - linker->item[linker->friend[left - 1]].mid_d <=
+                      linker->item[linker->friend[right]].mid_d - linker->item[high].mid_d;
         if (to_left) {
-            left--;
-            if (try_item(linker, sums, seed, left, INT64_MIN, linker->cycle_of[low]))
-                low = left;
+            size_t next = linker->friend[--left];
+            if (try_item(linker, sums, next, INT64_MIN, linker->cycle_of[low]))
+                low = next;
         } else {
-            if (try_item(linker, sums, seed, right, linker->cycle_of[high], INT64_MAX))
-                high = right;
-            right++;
+            size_t next = linker->friend[right++];
+            if (try_item(linker, sums, next, linker->cycle_of[high], INT64_MAX))
+                high = next;
         }
+    }
+}
+
+static void collect_members(struct linker *linker)
+{
+    linker->members = 0;
+    for (size_t i = 0; i < linker->friends; i++) {
+        const struct linkable *item = &linker->item[linker->friend[i]];
+        if (!linker->in[linker->friend[i]])
+            continue;
+        size_t at = linker->members++;
+        linker->member[at] = linker->friend[i];
+        linker->cycle[at] = linker->cycle_of[linker->friend[i]];
+        linker->mid_d[at] = item->mid_d;
+        linker->error_d[at] = item->error_d;
+        linker->sigma_d[at] = item->sigma_d;
     }
 }
 
@@ -107,28 +131,22 @@ void linker_grow(struct linker *linker, const struct seed *seed)
     const struct linkable *second = &linker->item[seed->second];
     struct line_sums sums = {.start_d = first->mid_d,
                              .period_d = (second->mid_d - first->mid_d) / (double)seed->cycles};
-    for (size_t i = 0; i < linker->count; i++)
-        linker->in[i] = false;
+    for (size_t i = 0; i < linker->friends; i++)
+        linker->in[linker->friend[i]] = false;
     linker->in[seed->first] = linker->in[seed->second] = true;
     linker->cycle_of[seed->first] = 0;
     linker->cycle_of[seed->second] = seed->cycles;
     add_to_sums(&sums, first, 0);
     add_to_sums(&sums, second, seed->cycles);
-    int64_t last = 0;
-    for (size_t i = seed->first + 1; i < seed->second; i++)
-        if (try_item(linker, &sums, seed, i, last, seed->cycles))
-            last = linker->cycle_of[i];
-    grow_outwards(linker, &sums, seed);
-    linker->members = 0;
-    for (size_t i = 0; i < linker->count; i++)
-        if (linker->in[i]) {
-            size_t at = linker->members++;
-            linker->member[at] = i;
-            linker->cycle[at] = linker->cycle_of[i];
-            linker->mid_d[at] = linker->item[i].mid_d;
-            linker->error_d[at] = linker->item[i].error_d;
-            linker->sigma_d[at] = linker->item[i].sigma_d;
-        }
+    size_t left = 0;
+    while (linker->friend[left] != seed->first)
+        left++;
+    size_t right = left + 1;
+    for (int64_t last = 0; linker->friend[right] != seed->second; right++)
+        if (try_item(linker, &sums, linker->friend[right], last, seed -> cycles))
+            last = linker->cycle_of[linker->friend[right]];
+    grow_outwards(linker, &sums, left, right + 1);
+    collect_members(linker);
 }
 
 void linker_line(struct linker *linker, struct ephemeris_line *line)

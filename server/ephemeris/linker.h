@@ -29,6 +29,9 @@ struct linker {
     size_t members;
     int64_t *cycle_of; /* of each item, where it is in */
     bool *in;
+    /* What may join the pair at hand, by time: the pair itself, and what is similar to both. */
+    size_t *friend;
+    size_t friends;
 };
 
 /* Two events and the number of cycles between them. */
@@ -47,8 +50,11 @@ struct trial {
 /* Whether depth and duration of two events are similar. */
 bool linker_is_similar(const struct linkable *a, const struct linkable *b);
 
+/* Set the pair at hand: what is not taken and similar to both. */
+void linker_pair(struct linker *linker, size_t first, size_t second);
+
 /* Find the events that the seed's period explains: from the seed outwards, each judged by the line
- * through those before it. */
+ * through those before it. The seed's pair must be at hand. */
 void linker_grow(struct linker *linker, const struct seed *seed);
 
 /* The line through the grown members, cycles moved to its epoch. */

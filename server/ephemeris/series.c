@@ -6,8 +6,8 @@
 #include "linker.h"
 #include "single.h"
 
-#define ALL_PAIRS_UP_TO 24 /* with more events, only the next ones are paired */
-#define PAIRS_OF_AN_EVENT 10
+#define ALL_PAIRS_UP_TO 12 /* with more events, each is paired with the next similar ones only */
+#define PAIRS_OF_AN_EVENT 5
 #define CYCLES_MOST 20000 /* between the two events of a seed */
 #define TRIALS_MOST 200000
 #define MID_SCATTER 0.02  /* of the duration; common practice, no source */
@@ -97,9 +97,10 @@ static bool open_linker(struct linker *linker, const struct ephemeris_event *eve
     linker->error_d = base_arena_take_array(arena, room, sizeof *linker->error_d);
     linker->sigma_d = base_arena_take_array(arena, room, sizeof *linker->sigma_d);
     linker->in = base_arena_take_array(arena, room, sizeof *linker->in);
+    linker->friend = base_arena_take_array(arena, room, sizeof *linker->friend);
     if (linker->item == NULL || linker->member == NULL || linker->cycle == NULL ||
         linker->cycle_of == NULL || linker->mid_d == NULL || linker->error_d == NULL ||
-        linker->sigma_d == NULL || linker->in == NULL)
+        linker->sigma_d == NULL || linker->in == NULL || linker->friend == NULL)
         return base_fail(error, BASE_MEMORY, "No memory to link %zu dips.", count);
     for (size_t i = 0; i < count; i++) {
         if (!(event[i].probability >= 0.0 && event[i].probability <= 1.0))
@@ -159,6 +160,12 @@ static int by_evidence(const void *left, const void *right)
     return better_first(left, right);
 }
 
+static void sort_trials(struct search *search, int (*compare)(const void *, const void *))
+{
+    if (search->trials > 1) /* the array may not be there yet */
+        qsort(search->trial, search->trials, sizeof *search->trial, compare);
+}
+
 /* Below this a trial can neither be an alias that survives nor help to make a series. */
 static double evidence_floor(const struct search *search)
 {
@@ -169,7 +176,7 @@ static double evidence_floor(const struct search *search)
 /* Keep each way once, and only what is above the floor. */
 static void tidy_trials(struct search *search)
 {
-    qsort(search->trial, search->trials, sizeof *search->trial, by_way);
+    sort_trials(search, by_way);
     double least = evidence_floor(search);
     size_t kept = 0;
     uint64_t last = 0;
@@ -195,7 +202,7 @@ static bool keep_trial(struct search *search, const struct trial *trial, struct 
         search->room = room;
     }
     if (search->trials == search->room) {
-        qsort(search->trial, search->trials, sizeof *search->trial, by_evidence);
+        sort_trials(search, by_evidence);
         search->trials /= 2;
     }
     search->trial[search->trials++] = *trial;
@@ -203,13 +210,19 @@ static bool keep_trial(struct search *search, const struct trial *trial, struct 
     return true;
 }
 
+/* The shortest period that two dips may have: twice their duration, or what the rules say. */
+static double shortest_period(const struct linker *linker, size_t first, size_t second)
+{
+    const struct linkable *a = &linker->item[first], *b = &linker->item[second];
+    return fmax(linker->rules->period_least_d, 2.0 * exp(0.5 * (a->ln_duration + b->ln_duration)));
+}
+
 static bool try_pair(struct search *search, size_t first, size_t second, struct base_error *error)
 {
     struct linker *linker = &search->linker;
-    const struct linkable *a = &linker->item[first], *b = &linker->item[second];
-    double apart = b->mid_d - a->mid_d;
-    double least =
-        fmax(linker->rules->period_least_d, 2.0 * exp(0.5 * (a->ln_duration + b->ln_duration)));
+    double apart = linker->item[second].mid_d - linker->item[first].mid_d;
+    double least = shortest_period(linker, first, second);
+    linker_pair(linker, first, second);
     for (int64_t cycles = 1; cycles <= CYCLES_MOST && apart / (double)cycles >= least; cycles++) {
         struct seed seed = {.first = first, .second = second, .cycles = cycles};
         struct trial trial;
@@ -231,6 +244,7 @@ static bool try_pairs(struct search *search, struct base_error *error)
         size_t pairs = 0;
         for (size_t j = i + 1; j < linker->count && pairs < most; j++) {
             if (linker->item[i].taken || linker->item[j].taken ||
+                linker->item[j].mid_d - linker->item[i].mid_d < shortest_period(linker, i, j) ||
                 !linker_is_similar(&linker->item[i], &linker->item[j]))
                 continue;
             pairs++;
@@ -239,7 +253,7 @@ static bool try_pairs(struct search *search, struct base_error *error)
         }
     }
     tidy_trials(search);
-    qsort(search->trial, search->trials, sizeof *search->trial, by_set);
+    sort_trials(search, by_set);
     return true;
 }
 
@@ -281,6 +295,7 @@ static bool fill_aliases(struct search *search, size_t from, size_t to,
         series->alias[i] = (struct ephemeris_alias){.missing = trial->missing,
                                                     .evidence = trial->evidence,
                                                     .share = exp(trial->evidence - best) / sum};
+        linker_pair(&search->linker, trial->seed.first, trial->seed.second);
         linker_grow(&search->linker, &trial->seed);
         linker_line(&search->linker, &series->alias[i].line);
     }
@@ -294,7 +309,9 @@ static bool fill_series(struct search *search, size_t from, size_t to,
     struct ephemeris_line line;
     if (!fill_aliases(search, from, to, series, error))
         return false;
-    linker_grow(linker, &search->trial[from].seed);
+    const struct seed *seed = &search->trial[from].seed;
+    linker_pair(linker, seed->first, seed->second);
+    linker_grow(linker, seed);
     linker_line(linker, &line);
     series->members = linker->members;
     series->member = base_arena_take_array(search->arena, linker->members, sizeof *series->member);
