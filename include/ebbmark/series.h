@@ -13,7 +13,7 @@
 #include "ebbmark/arena.h"
 #include "ebbmark/error.h"
 
-#define EPHEMERIS_EVENTS_MOST 200 /* of one star in one call */
+#define EPHEMERIS_EVENTS_MOST 2000 /* of one star in one call */
 #define EPHEMERIS_SERIES_MOST 16  /* that repeat, of one star; what is left counts as single */
 #define EPHEMERIS_ALIASES_LISTED 32
 #define EPHEMERIS_RANGES_LISTED 32

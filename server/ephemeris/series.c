@@ -8,6 +8,7 @@
 
 #define ALL_PAIRS_UP_TO 12 /* with more events, each is paired with the next similar ones only */
 #define PAIRS_OF_AN_EVENT 5
+#define PAIRED_MOST 100
 #define CYCLES_MOST 20000 /* between the two events of a seed */
 #define TRIALS_MOST 200000
 #define MID_SCATTER 0.02  /* of the duration; common practice, no source */
@@ -234,24 +235,37 @@ static bool try_pair(struct search *search, size_t first, size_t second, struct 
     return true;
 }
 
-static bool try_pairs(struct search *search, struct base_error *error)
+/* Pair one event with those after it that are open, similar and far enough. */
+static bool try_pairs_of(struct search *search, size_t first, struct base_error *error)
 {
     struct linker *linker = &search->linker;
     size_t most = linker->count <= ALL_PAIRS_UP_TO ? linker->count : PAIRS_OF_AN_EVENT;
+    size_t pairs = 0;
+    for (size_t i = first + 1; i < linker->count && pairs < most; i++) {
+        if (linker->item[i].taken ||
+            linker->item[i].mid_d - linker->item[first].mid_d < shortest_period(linker, first, i) ||
+            !linker_is_similar(&linker->item[first], &linker->item[i]))
+            continue;
+        pairs++;
+        if (!try_pair(search, first, i, error))
+            return false;
+    }
+    return true;
+}
+
+/* Try all pairs that begin with one of at most PAIRED_MOST open events, spread over all. */
+static bool try_pairs(struct search *search, struct base_error *error)
+{
+    struct linker *linker = &search->linker;
+    size_t open = 0, seen = 0;
     search->trials = 0;
     search->best = -INFINITY;
-    for (size_t i = 0; i < linker->count; i++) {
-        size_t pairs = 0;
-        for (size_t j = i + 1; j < linker->count && pairs < most; j++) {
-            if (linker->item[i].taken || linker->item[j].taken ||
-                linker->item[j].mid_d - linker->item[i].mid_d < shortest_period(linker, i, j) ||
-                !linker_is_similar(&linker->item[i], &linker->item[j]))
-                continue;
-            pairs++;
-            if (!try_pair(search, i, j, error))
-                return false;
-        }
-    }
+    for (size_t i = 0; i < linker->count; i++)
+        open += !linker->item[i].taken;
+    size_t step = (open + PAIRED_MOST - 1) / PAIRED_MOST;
+    for (size_t i = 0; i < linker->count; i++)
+        if (!linker->item[i].taken && seen++ % step == 0 && !try_pairs_of(search, i, error))
+            return false;
     tidy_trials(search);
     sort_trials(search, by_set);
     return true;

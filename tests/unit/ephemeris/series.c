@@ -158,14 +158,15 @@ static void a_dip_whose_time_is_not_known_is_left_out(void **state)
 static void many_dips_at_one_time_are_linked_without_harm(void **state)
 {
     (void)state;
-    struct ephemeris_event event[EPHEMERIS_EVENTS_MOST];
-    for (size_t i = 0; i < EPHEMERIS_EVENTS_MOST; i++)
+    enum { MANY = 200 };
+    struct ephemeris_event event[MANY];
+    for (size_t i = 0; i < MANY; i++)
         event[i] = dip_at(105.0 + (double)(i % 3));
-    struct ephemeris_linked found = linked(event, EPHEMERIS_EVENTS_MOST);
+    struct ephemeris_linked found = linked(event, MANY);
     size_t members = 0;
     for (size_t i = 0; i < found.count; i++)
         members += found.series[i].members;
-    assert_int_equal(members, EPHEMERIS_EVENTS_MOST);
+    assert_int_equal(members, MANY);
 }
 
 static void refused(const struct ephemeris_event *event, size_t count,
@@ -182,7 +183,7 @@ static void refused(const struct ephemeris_event *event, size_t count,
 static void numbers_out_of_range_are_refused(void **state)
 {
     (void)state;
-    struct ephemeris_event many[EPHEMERIS_EVENTS_MOST + 1];
+    static struct ephemeris_event many[EPHEMERIS_EVENTS_MOST + 1];
     for (size_t i = 0; i <= EPHEMERIS_EVENTS_MOST; i++)
         many[i] = dip_at(105.0);
     const struct ephemeris_link_rules *usual = &ephemeris_link_rules_usual;
