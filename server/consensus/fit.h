@@ -34,14 +34,14 @@ union fit_nodes {
 
 /* One look: what it says of its reviewer in each class. */
 struct fit_pair {
-    double slope[FIT_SIDES]; /* d of the expected log-likelihood by the logit; while a group is
+    float slope[FIT_SIDES]; /* d of the expected log-likelihood by the logit; while a group is
                                 summed, e^-logit stands here */
-    double curve[FIT_SIDES]; /* minus the second derivative, >= 0 */
-    double known[FIT_SIDES]; /* the curve, less what it is not known whether the group is of the
+    float curve[FIT_SIDES]; /* minus the second derivative, >= 0 */
+    float known[FIT_SIDES]; /* the curve, less what it is not known whether the group is of the
                                 class, nor how hard it is */
-    double alone;            /* P(nothing, by chance) where marked */
-    double together;         /* P(nothing, marked together) where marked */
-    double invited;          /* marks made together, over the weight of all lookers */
+    float alone;            /* P(nothing, by chance) where marked */
+    float together;         /* P(nothing, marked together) where marked */
+    float invited;          /* marks made together, over the weight of all lookers */
 };
 
 /* One group, beside the caller's item. */
@@ -88,6 +88,7 @@ struct fit_people_sums {
     double chance_days;  /* sum of chance rate x days */
 };
 
+#define FIT_AHEAD 16 /* looks to fetch ahead */
 #define FIT_PEOPLE_A_BLOCK 1024
 /* One reviewer's numbers as a round uses them. */
 struct fit_factor {

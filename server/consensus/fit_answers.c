@@ -72,9 +72,9 @@ static void share_curves(const struct fit *fit, struct share *shares)
         shares[j].chance = 1.0;
         for (size_t k = fit->first_of_person[j]; k < fit->first_of_person[j + 1]; k++) {
             const struct fit_pair *pair = &fit->pairs[fit->of_person[k]];
-            shares[j].variance[FIT_DIP] += pair->curve[FIT_DIP];
-            shares[j].variance[FIT_LURE] += pair->curve[FIT_LURE];
-            shares[j].chance += pair->alone;
+            shares[j].variance[FIT_DIP] += (double)pair->curve[FIT_DIP];
+            shares[j].variance[FIT_LURE] += (double)pair->curve[FIT_LURE];
+            shares[j].chance += (double)pair->alone;
         }
     }
 }
@@ -177,7 +177,8 @@ static double log_odds_variance(const struct fit *fit, size_t g, const struct sh
         const struct consensus_look *look = &fit->input->looks[item->first_look + k];
         const struct fit_pair *pair = &fit->pairs[item->first_look + k];
         const struct share *share = &shares[look->person];
-        double by_dip = pair->slope[FIT_DIP], by_lure = lure * pair->slope[FIT_LURE];
+        double by_dip = (double)pair->slope[FIT_DIP];
+        double by_lure = lure * (double)pair->slope[FIT_LURE];
         sum += by_dip * by_dip * share->variance[FIT_DIP] +
                by_lure * by_lure * share->variance[FIT_LURE];
         if (look->marked)

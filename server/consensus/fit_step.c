@@ -128,15 +128,17 @@ static void person_step(struct fit *fit, size_t j, struct fit_people_sums *sums)
     double known[FIT_SIDES] = {0.0, 0.0}, chance = 0.0;
     double together = 1.0, invited = 1.0;
     for (size_t k = fit->first_of_person[j]; k < fit->first_of_person[j + 1]; k++) {
+        /* A reviewer's looks lie all over the memory; of_person has FIT_AHEAD entries to spare. */
+        __builtin_prefetch(&fit->pairs[fit->of_person[k + FIT_AHEAD]]);
         const struct fit_pair *pair = &fit->pairs[fit->of_person[k]];
         for (int side = 0; side < FIT_SIDES; side++) {
-            slope[side] += pair->slope[side];
-            curve[side] += pair->curve[side];
-            known[side] += pair->known[side];
+            slope[side] += (double)pair->slope[side];
+            curve[side] += (double)pair->curve[side];
+            known[side] += (double)pair->known[side];
         }
-        chance += pair->alone;
-        together += pair->together;
-        invited += pair->invited;
+        chance += (double)pair->alone;
+        together += (double)pair->together;
+        invited += (double)pair->invited;
     }
     const double mean[FIT_SIDES] = {common->hit_mean, common->lure_mean};
     const double spread[FIT_SIDES] = {common->hit_sd, common->lure_sd};

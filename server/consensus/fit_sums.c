@@ -98,7 +98,7 @@ static void side_sum(const struct fit *fit, size_t g, int side, struct side *out
             logit = logit > 0.0 ? LOGIT_MOST : -LOGIT_MOST;
             t = exp(-logit);
         }
-        pairs[k].slope[side] = t;
+        pairs[k].slope[side] = (float)t;
         sums[looks[k].marked != 0] += logit;
 #pragma GCC unroll 2
         for (int i = 0; i < FIT_PACKS; i++)
@@ -215,7 +215,7 @@ static void side_derive(const struct fit *fit, size_t g, int side, const struct 
         marked.pack[i] = bent.pack[i] = BOTH(0.0);
     }
     for (size_t k = 0; k < item->looks; k++) {
-        fit_pack once = BOTH(0.0), twice = BOTH(0.0), t = BOTH(pairs[k].slope[side]);
+        fit_pack once = BOTH(0.0), twice = BOTH(0.0), t = BOTH((double)pairs[k].slope[side]);
         double y = looks[k].marked;
 #pragma GCC unroll 2
         for (int i = 0; i < FIT_PACKS; i++) {
@@ -227,14 +227,15 @@ static void side_derive(const struct fit *fit, size_t g, int side, const struct 
             bent.pack[i] += rate - rate * rate;
         }
         double expected = ACROSS(once), squared = ACROSS(twice), variance = expected - squared;
-        pairs[k].slope[side] = p * y - expected;
-        pairs[k].curve[side] = variance > 0.0 ? variance : 0.0;
+        double gain = p * y - expected, bend = variance > 0.0 ? variance : 0.0;
+        pairs[k].slope[side] = (float)gain;
+        pairs[k].curve[side] = (float)bend;
         /* The variance of the slope over classes and nodes is taken off (Louis 1982, J. R. Stat.
          * Soc. B 44, 226). */
         double squares = squared + y * (p - 2.0 * expected);
-        pairs[k].known[side] = variance - squares + pairs[k].slope[side] * pairs[k].slope[side];
-        slope += pairs[k].slope[side];
-        curve += pairs[k].curve[side];
+        pairs[k].known[side] = (float)(variance - squares + gain * gain);
+        slope += gain;
+        curve += bend;
     }
     double x = fit_x(fit, group, side);
     sums->slope[side] += x * slope;
@@ -260,14 +261,14 @@ static void side_observe(const struct fit *fit, size_t g, int side, const struct
     for (size_t k = 0; k < item->looks; k++) {
         double mean = 0.0, squares = 0.0, curve = 0.0;
         for (int m = 0; m < FIT_NODES; m++) {
-            double rate = 1.0 / (1.0 + pairs[k].slope[side] * fit->scale[side].at[m]);
+            double rate = 1.0 / (1.0 + (double)pairs[k].slope[side] * fit->scale[side].at[m]);
             double off = looks[k].marked - rate, share = nodes->share.at[m];
             mean += share * off;
             squares += share * off * off;
             curve += share * rate * (1.0 - rate);
         }
-        pairs[k].slope[side] = mean;
-        pairs[k].curve[side] = p * curve - (p * squares - p * p * mean * mean);
+        pairs[k].slope[side] = (float)mean;
+        pairs[k].curve[side] = (float)(p * curve - (p * squares - p * p * mean * mean));
     }
 }
 
@@ -320,9 +321,9 @@ static void group_sum(struct fit *fit, size_t g, struct fit_sums *sums)
     double invited = group->marks < 2.0 ? 0.0 : together * group->marks / group->company;
     for (size_t k = 0; k < item->looks; k++) {
         bool marked = fit->input->looks[item->first_look + k].marked;
-        pairs[k].alone = marked ? alone : 0.0;
-        pairs[k].together = marked ? together : 0.0;
-        pairs[k].invited = invited;
+        pairs[k].alone = marked ? (float)alone : 0.0f;
+        pairs[k].together = marked ? (float)together : 0.0f;
+        pairs[k].invited = (float)invited;
     }
     for (int side = 0; side < FIT_SIDES; side++) {
         double unseen = group->unseen[side];

@@ -11,8 +11,6 @@
 #include "input.h"
 
 #define LOOKS_A_BLOCK 4096
-#define STRETCH_MOST 1.5   /* how many times its step a round may go while that pays */
-#define STRETCH_GROWTH 1.2 /* from one round to the next */
 #define STEP_LEAST (1.0 / 1024.0)
 
 void consensus_output_free(struct consensus_output *output)
@@ -73,7 +71,7 @@ static bool fit_open(struct fit *fit, struct base_error *error)
     fit->groups = calloc(input->item_count + 1, sizeof *fit->groups);
     fit->pairs = calloc(looks, sizeof *fit->pairs);
     fit->first_of_person = calloc(people + 1, sizeof *fit->first_of_person);
-    fit->of_person = calloc(looks, sizeof *fit->of_person);
+    fit->of_person = calloc(looks + FIT_AHEAD, sizeof *fit->of_person);
     fit->blocks = calloc(fit->block_count + 1, sizeof *fit->blocks);
     fit->block_sums = calloc(fit->block_count + 1, sizeof *fit->block_sums);
     fit->people_sums = calloc(fit->people_block_count + 1, sizeof *fit->people_sums);
@@ -174,8 +172,8 @@ static void start(struct fit *fit)
 
 /* ---- rounds ---- */
 
-/* Go `far` of the way from where the last accepted sums were taken to where their step led; past 1
- * is beyond it. What must stay positive goes by its logarithm. */
+/* Go `far` of the way, at most 1, from where the last accepted sums were taken to where their step
+ * led. What must stay positive goes by its logarithm. */
 static double between(double from, double to, double far)
 {
     return from + far * (to - from);
@@ -232,7 +230,7 @@ static void iterate(struct fit *fit, struct consensus_output *out)
         bool second = settings->hold || out->rounds % 2 == 1;
         double now = judge(fit);
         while (second && now < before - 1e-13 * fabs(before) && far > STEP_LEAST) {
-            far = far > 1.0 ? 1.0 : 0.5 * far;
+            far *= 0.5;
             go(fit, far);
             now = judge(fit);
         }
@@ -247,12 +245,11 @@ static void iterate(struct fit *fit, struct consensus_output *out)
         keep(fit);
         if (second && !settings->hold) {
             fit_step_population(fit);
-            go(fit, 1.0);
         } else {
             fit_step(fit);
-            far = far < 1.0 ? 1.0 : fmin(far * STRETCH_GROWTH, STRETCH_MOST);
-            go(fit, far);
         }
+        far = 1.0;
+        go(fit, far);
     }
     /* The answers are of the numbers that were judged, not of the step after them. */
     fit->common = fit->common_before;
