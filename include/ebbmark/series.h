@@ -14,7 +14,8 @@
 #include "ebbmark/error.h"
 
 #define EPHEMERIS_EVENTS_MOST 2000 /* of one star in one call */
-#define EPHEMERIS_SERIES_MOST 16  /* that repeat, of one star; what is left counts as single */
+#define EPHEMERIS_SERIES_MOST 16   /* that repeat, of one star; what is left counts as single */
+#define EPHEMERIS_TIME_MOST_D 1e9  /* of any time, either side of 0 */
 #define EPHEMERIS_ALIASES_LISTED 32
 #define EPHEMERIS_RANGES_LISTED 32
 
@@ -40,8 +41,9 @@ void ephemeris_line_fit(const double *mid_d, const double *mid_error_d, const in
 double ephemeris_line_mid_d(const struct ephemeris_line *line, int64_t cycle);
 double ephemeris_line_mid_error_d(const struct ephemeris_line *line, int64_t cycle);
 
-/* A candidate. It is left out where mid, depth or duration is not finite and above 0 (mid: finite),
- * or mid_error_d is not above 0. Other errors that are not known may be NAN. */
+/* A candidate. It is left out where its time is not a number of at most EPHEMERIS_TIME_MOST_D, or
+ * mid_error_d, depth or duration_d is not one from 1e-9 to 1e9: nothing can be said of its period.
+ * The errors of depth and duration may be NAN where they are not known. */
 struct ephemeris_event {
     double mid_d, mid_error_d;
     double depth, depth_error; /* relative */

@@ -140,7 +140,7 @@ static void search_block(void *context, size_t block)
     for (size_t i = from; i < to; i++)
         if (bins_of(search->period[i], work->width) > most)
             most = bins_of(search->period[i], work->width);
-    struct bin *bins = malloc((2 * most + work->longest + 1) * sizeof *bins);
+    struct bin *bins = calloc(2 * most + work->longest + 1, sizeof *bins);
     if (bins == NULL) {
         work->no_memory = true;
         return;

@@ -8,6 +8,7 @@
  */
 #include "linker.h"
 
+#include <assert.h>
 #include <math.h>
 
 #define GATE_SIGMA 4.0
@@ -163,6 +164,7 @@ void linker_line(struct linker *linker, struct ephemeris_line *line)
 static double agreement(const struct linker *linker, bool depth, double ln_range)
 {
     double weight = 0.0, sum = 0.0, squares = 0.0, ln_sigmas = 0.0;
+    assert(linker->members >= 2);
     for (size_t i = 0; i < linker->members; i++) {
         const struct linkable *item = &linker->item[linker->member[i]];
         double sigma = depth ? item->depth_sigma : item->duration_sigma;

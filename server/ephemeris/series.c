@@ -11,7 +11,9 @@
 #define PAIRED_MOST 100
 #define CYCLES_MOST 20000 /* between the two events of a seed */
 #define TRIALS_MOST 200000
-#define MID_SCATTER 0.02  /* of the duration; common practice, no source */
+#define MID_SCATTER 0.02 /* of the duration; common practice, no source */
+#define LEAST 1e-9       /* of an error, depth or duration: less is none */
+#define DEPTH_MOST 1e9
 #define UNKNOWN_ERROR 0.3 /* relative, of a depth or duration whose error is not known */
 #define PROBABILITY_LEAST 1e-6
 #define PERIODS_BEYOND 10.0 /* periods are thought of up to so many lengths of the data */
@@ -50,11 +52,17 @@ static bool check_rules(const struct ephemeris_link_rules *rules, struct base_er
                              "chances and shares between 0 and 1.");
 }
 
+static bool is_within(double value, double least, double most)
+{
+    return value >= least && value <= most;
+}
+
 static bool is_usable(const struct ephemeris_event *event)
 {
-    return isfinite(event->mid_d) && isfinite(event->mid_error_d) && event->mid_error_d > 0.0 &&
-           isfinite(event->depth) && event->depth > 0.0 && isfinite(event->duration_d) &&
-           event->duration_d > 0.0;
+    return is_within(event->mid_d, -EPHEMERIS_TIME_MOST_D, EPHEMERIS_TIME_MOST_D) &&
+           is_within(event->mid_error_d, LEAST, EPHEMERIS_TIME_MOST_D) &&
+           is_within(event->depth, LEAST, DEPTH_MOST) &&
+           is_within(event->duration_d, LEAST, EPHEMERIS_TIME_MOST_D);
 }
 
 static double relative_error(double error, double value)
@@ -277,8 +285,9 @@ static double best_set(const struct search *search, size_t *from, size_t *to)
     double best = -INFINITY;
     *from = *to = 0;
     for (size_t i = 0, end; i < search->trials; i = end) {
-        double sum = 0.0;
-        for (end = i; end < search->trials && search->trial[end].set == search->trial[i].set; end++)
+        double sum = 1.0; /* in units of the first one's odds */
+        for (end = i + 1; end < search->trials && search->trial[end].set == search->trial[i].set;
+             end++)
             sum += exp(search->trial[end].evidence - search->trial[i].evidence);
         double evidence = search->trial[i].evidence + log(sum);
         if (evidence > best) {

@@ -66,17 +66,18 @@ bool single_ranges(const struct watch *watch, const struct ephemeris_link_rules 
     double least = fmax(rules->period_least_d, 2.0 * duration_d), beyond = least;
     if (watch->stretches > 0)
         beyond = fmax(mid_d - watch->first_d, watch->last_d - mid_d) + duration_d;
-    double steps = 0.0, range = log(beyond / least);
+    double range = log(beyond / least);
+    size_t steps = 0;
     if (range > 0.0)
-        steps = fmin(ceil(range * beyond / (STEP * duration_d)), STEPS_MOST);
+        steps = (size_t)fmin(ceil(range * beyond / (STEP * duration_d)), STEPS_MOST);
     double from = NAN;
-    for (double step = 0.0; step < steps; step += 1.0) {
-        double period = least * exp(range * (step / steps));
+    for (size_t step = 0; step < steps; step++) {
+        double period = least * exp(range * ((double)step / (double)steps));
         bool allowed = is_allowed(watch, rules, mid_d, duration_d, period);
         if (allowed && isnan(from))
             from = period;
         if (!allowed && !isnan(from)) {
-            double to = least * exp(range * ((step - 1.0) / steps));
+            double to = least * exp(range * (((double)step - 1.0) / (double)steps));
             if (to > from)
                 add_range(series, (struct ephemeris_range){from, to});
             from = NAN;

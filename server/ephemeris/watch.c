@@ -17,11 +17,12 @@ static bool check_times(const struct ephemeris_watch *data, struct base_error *e
         return base_fail(error, BASE_INVALID, "The cadence %g d is not above 0 and at most %g d.",
                          data->cadence_d, CADENCE_MOST_D);
     for (size_t i = 0; i < data->count; i++)
-        if (!isfinite(data->time[i]) || (i > 0 && !(data->time[i] >= data->time[i - 1])))
+        if (!(fabs(data->time[i]) <= EPHEMERIS_TIME_MOST_D) ||
+            (i > 0 && !(data->time[i] >= data->time[i - 1])))
             return base_fail(error, BASE_INVALID,
-                             "Time %zu of the star's points is not finite or comes before the one "
-                             "before it.",
-                             i);
+                             "Time %zu of the star's points is not a number of at most %g d, or "
+                             "comes before the one before it.",
+                             i, EPHEMERIS_TIME_MOST_D);
     return true;
 }
 
@@ -100,10 +101,10 @@ void watch_each_cycle(const struct watch *watch, const struct ephemeris_line *li
         double ends = watch->stretch[i].ends_d + duration_d - line->epoch_d;
         double from = fmax(ceil(starts / line->period_d), done + 1.0);
         double to = floor(ends / line->period_d);
-        if (fabs(from) > CYCLE_MOST || fabs(to) > CYCLE_MOST)
+        if (!(fabs(from) <= CYCLE_MOST && fabs(to) <= CYCLE_MOST))
             continue;
-        for (double cycle = from; cycle <= to; cycle += 1.0)
-            if (!visit(context, (int64_t)cycle))
+        for (int64_t cycle = (int64_t)from; cycle <= (int64_t)to; cycle++)
+            if (!visit(context, cycle))
                 return;
         done = fmax(done, to);
     }

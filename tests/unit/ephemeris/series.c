@@ -155,6 +155,36 @@ static void a_dip_whose_time_is_not_known_is_left_out(void **state)
     assert_int_equal(linked(event, 0).count, 0);
 }
 
+static void numbers_at_the_ends_of_their_range_do_no_harm(void **state)
+{
+    (void)state;
+    const double ends[] = {-INFINITY, -1e308, -1e9, -1.0,  0.0,     1e-308,
+                           1e-9,      1.0,    1e9,  1e308, INFINITY};
+    enum { ENDS = sizeof ends / sizeof ends[0] };
+    struct ephemeris_event event[ENDS * 6];
+    for (size_t i = 0; i < ENDS; i++) {
+        for (size_t k = 0; k < 6; k++)
+            event[6 * i + k] = dip_at(105.0 + (double)k);
+        event[6 * i].mid_d = ends[i];
+        event[6 * i + 1].mid_error_d = ends[i];
+        event[6 * i + 2].depth = ends[i];
+        event[6 * i + 3].depth_error = ends[i];
+        event[6 * i + 4].duration_d = ends[i];
+        event[6 * i + 5].duration_error_d = ends[i];
+    }
+    struct ephemeris_linked found = linked(event, ENDS * 6);
+    assert_true(found.count > 0);
+    for (size_t i = 0; i < found.count; i++) {
+        for (size_t k = 0; k < found.series[i].aliases; k++)
+            assert_true(found.series[i].alias[k].line.period_d > 0.0 &&
+                        isfinite(found.series[i].alias[k].line.period_error_d) &&
+                        isfinite(found.series[i].alias[k].evidence));
+        for (size_t k = 0; k < found.series[i].ranges; k++)
+            assert_true(found.series[i].range[k].from_d > 0.0 &&
+                        found.series[i].range[k].to_d > found.series[i].range[k].from_d);
+    }
+}
+
 static void many_dips_at_one_time_are_linked_without_harm(void **state)
 {
     (void)state;
@@ -236,6 +266,7 @@ int main(void)
         cmocka_unit_test(a_single_dip_excludes_periods_that_would_show_another),
         cmocka_unit_test(without_data_a_single_dip_may_have_any_period),
         cmocka_unit_test(a_dip_whose_time_is_not_known_is_left_out),
+        cmocka_unit_test(numbers_at_the_ends_of_their_range_do_no_harm),
         cmocka_unit_test(many_dips_at_one_time_are_linked_without_harm),
         cmocka_unit_test(numbers_out_of_range_are_refused),
         cmocka_unit_test(too_little_memory_is_an_error),
