@@ -108,6 +108,8 @@ struct fit_logs {
     double dips, lures, together, kappa, sure[FIT_CLASSES], unsure[FIT_CLASSES];
 };
 struct fit {
+    union fit_nodes scale[FIT_SIDES];                  /* E = e^(-tau u) */
+    union fit_nodes powers[FIT_SIDES][FIT_POWERS + 1]; /* its powers */
     const struct consensus_input *input;
     const struct consensus_settings *settings;
     struct consensus_common common;
@@ -126,8 +128,6 @@ struct fit {
     struct fit_sums sums;
     struct fit_people_sums people_sum;
     struct fit_logs logs;
-    union fit_nodes scale[FIT_SIDES];                  /* E = e^(-tau u) */
-    union fit_nodes powers[FIT_SIDES][FIT_POWERS + 1]; /* its powers */
     bool still;    /* the logits stay, in the population's step */
     bool observed; /* for intervals: slopes and curves are of the observed likelihood, see below */
 };
