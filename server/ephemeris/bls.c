@@ -56,6 +56,8 @@ static void fold(const struct work *work, double period, struct bin *bins, size_
     double high = scaled - (scaled - period), low = period - high, rate = 1.0 / period;
     for (size_t i = 0; i < count; i++)
         bins[i] = (struct bin){0};
+    struct bin sum = {0};
+    size_t last = 0;
     for (size_t i = 0; i < work->count; i++) {
         const struct point *point = &work->points[i];
         double cycle = (double)(int64_t)(point->since * rate);
@@ -67,9 +69,17 @@ static void fold(const struct work *work, double period, struct bin *bins, size_
         size_t at = (size_t)(phase / work->width);
         if (at >= count)
             at = count - 1;
-        bins[at].light += point->light;
-        bins[at].weight += point->weight;
+        if (at != last) { /* points of one bin mostly follow each other */
+            bins[last].light += sum.light;
+            bins[last].weight += sum.weight;
+            sum = (struct bin){0};
+            last = at;
+        }
+        sum.light += point->light;
+        sum.weight += point->weight;
     }
+    bins[last].light += sum.light;
+    bins[last].weight += sum.weight;
 }
 
 /* Lay the ring's beginning behind its end and sum: sums[i] holds the bins before bin i. */
