@@ -1,5 +1,5 @@
 # Two commands matter: `make demo` and `make test`. Each installs what it needs, builds and runs.
-# Others: demo-once, build, bench, format, lint, deps, install.
+# Others: demo-once, build, bench, evaluate, format, lint, deps, clean.
 
 SHELL := /bin/bash
 MODE ?= release
@@ -49,7 +49,7 @@ sources = $(sort $(wildcard server/$(1)/*.c))
 objects = $(patsubst %.c,$(B)/%.o,$(call sources,$(1)))
 archive = $(B)/room-$(1).a
 
-.PHONY: all build deps deps-test demo demo-once test bench evaluate format lint install clean
+.PHONY: all build deps deps-test demo demo-once test bench evaluate format lint clean
 all: build
 build: $(B)/ebbmark
 
