@@ -35,19 +35,6 @@ static bool add_span(struct cutter *cutter, size_t first, size_t end, struct bas
     return true;
 }
 
-/* The first point in [low, high) that is not before `at`, or high. */
-static size_t first_not_before(const double *time, size_t low, size_t high, double at)
-{
-    while (low < high) {
-        size_t middle = low + (high - low) / 2;
-        if (time[middle] < at)
-            low = middle + 1;
-        else
-            high = middle;
-    }
-    return low;
-}
-
 /* The point after the gap nearest to `boundary`, of the gaps within a quarter of a segment of it
  * that leave at least least_d on both sides; 0 when there is none. Of equals the longer. */
 static size_t gap_near(const struct cutter *cutter, size_t first, size_t end, double boundary)
@@ -56,7 +43,7 @@ static size_t gap_near(const struct cutter *cutter, size_t first, size_t end, do
     double reach = 0.25 * cutter->settings->length_d, least = cutter->settings->least_d;
     double nearest = INFINITY, longest = 0.0;
     size_t found = 0;
-    size_t after = first_not_before(time, first + 1, end, boundary - reach);
+    size_t after = lightcurve_first_not_before(time, first + 1, end, boundary - reach);
     for (; after < end && time[after - 1] <= boundary + reach; after++) {
         double before_d = time[after - 1], length = time[after] - before_d;
         if (length <= cutter->gap_d || before_d - time[first] < least ||
@@ -87,8 +74,8 @@ static bool cut_island(struct cutter *cutter, size_t first, size_t end, struct b
         double boundary = time[first] + (left + (pieces - 1.0) * overlap) / pieces;
         size_t after = gap_near(cutter, first, end, boundary), next = after;
         if (after == 0) {
-            after = first_not_before(time, first, end, nextafter(boundary, INFINITY));
-            next = first_not_before(time, first + 1, after, boundary - overlap);
+            after = lightcurve_first_not_before(time, first, end, nextafter(boundary, INFINITY));
+            next = lightcurve_first_not_before(time, first + 1, after, boundary - overlap);
         }
         if (after <= covered)
             after = covered + 1;

@@ -120,8 +120,8 @@ static void widen_errors(const struct dip_points *points, const struct dip_bound
 static size_t points_within(const struct dip_task *task, double mid_d, double length_d)
 {
     double starts = mid_d - 0.5 * length_d, ends = mid_d + 0.5 * length_d;
-    return dip_first_not_before(task->time, task->n, nextafter(ends, INFINITY)) -
-           dip_first_not_before(task->time, task->n, starts);
+    return lightcurve_first_not_before(task->time, 0, task->n, nextafter(ends, INFINITY)) -
+           lightcurve_first_not_before(task->time, 0, task->n, starts);
 }
 
 /* How much of T14 lies within half a cadence of a point. */
@@ -129,7 +129,7 @@ static double covered_share(const struct dip_task *task, const struct lightcurve
 {
     double starts = dip->mid_d - 0.5 * dip->duration_d, ends = dip->mid_d + 0.5 * dip->duration_d;
     double half = 0.5 * task->cadence_d, covered = 0.0, until = starts;
-    for (size_t i = dip_first_not_before(task->time, task->n, starts - half);
+    for (size_t i = lightcurve_first_not_before(task->time, 0, task->n, starts - half);
          i < task->n && task->time[i] <= ends + half; i++) {
         double from = fmax(task->time[i] - half, until), to = fmin(task->time[i] + half, ends);
         if (to > from)
@@ -143,7 +143,7 @@ static double covered_share(const struct dip_task *task, const struct lightcurve
 static double room_before_gap(const struct dip_task *task, double at, bool forward)
 {
     const double *time = task->time;
-    size_t after = dip_first_not_before(time, task->n, at);
+    size_t after = lightcurve_first_not_before(time, 0, task->n, at);
     if (after == 0 || after == task->n)
         return 0.0;
     if (time[after] > at && time[after] - time[after - 1] > task->gap_d)

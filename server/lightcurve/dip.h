@@ -52,9 +52,6 @@ bool dip_points_choose(struct dip_task *task);
 bool dip_points_gather(struct dip_task *task, struct dip_points *points);
 void dip_points_free(struct dip_points *points);
 
-/* The first of n increasing times that is not before `at`, or n. */
-size_t dip_first_not_before(const double *time, size_t n, double at);
-
 /* A box: points [first, end) lie in it. depth is a drop in flux units, negative for a bump. */
 struct dip_box {
     bool found;

@@ -5,6 +5,7 @@
  * so that each box costs the same whatever its length.
  */
 #include "dip.h"
+#include "robust.h"
 #include <math.h>
 
 #define LENGTH_RATIO 1.1    /* of one box length tried to the next */
@@ -143,10 +144,10 @@ static void search_places(const struct search *search, double sign, double lengt
     size_t places = (size_t)((bounds->mid_most_d - bounds->mid_least_d) / step) + 1;
     for (size_t i = 0; i < places; i++) {
         double mid = bounds->mid_least_d + (double)i * step;
-        size_t first =
-            dip_first_not_before(search->points->time, search->points->count, mid - 0.5 * length);
-        size_t end =
-            dip_first_not_before(search->points->time, search->points->count, mid + 0.5 * length);
+        size_t first = lightcurve_first_not_before(search->points->time, 0, search->points->count,
+                                                   mid - 0.5 * length);
+        size_t end = lightcurve_first_not_before(search->points->time, 0, search->points->count,
+                                                 mid + 0.5 * length);
         try_box(search, first, end, sign, best);
     }
 }
@@ -236,10 +237,10 @@ static void fill_box(const struct search *search, const struct best *best, struc
 /* Does the marked interval itself stand above its surroundings? */
 static bool marked_is_high(const struct search *search)
 {
-    size_t first =
-        dip_first_not_before(search->points->time, search->points->count, search->bounds->starts_d);
-    size_t end =
-        dip_first_not_before(search->points->time, search->points->count, search->bounds->ends_d);
+    size_t first = lightcurve_first_not_before(search->points->time, 0, search->points->count,
+                                               search->bounds->starts_d);
+    size_t end = lightcurve_first_not_before(search->points->time, 0, search->points->count,
+                                             search->bounds->ends_d);
     double depth, variance;
     return end > first && gain_of(search, first, end, &depth, &variance) > 0.0 && depth < 0.0;
 }

@@ -18,31 +18,19 @@
 #define SIDE_POINTS_LEAST 3    /* on both sides, for a slope … */
 #define SIDE_LENGTH_LEAST 0.25 /* … over this share of the interval */
 
-size_t dip_first_not_before(const double *time, size_t n, double at)
-{
-    size_t low = 0, high = n;
-    while (low < high) {
-        size_t middle = low + (high - low) / 2;
-        if (time[middle] < at)
-            low = middle + 1;
-        else
-            high = middle;
-    }
-    return low;
-}
-
 bool dip_points_choose(struct dip_task *task)
 {
     double length = task->ends_d - task->starts_d;
     if (!(length > 0.0) || !isfinite(length))
         return false;
     double beside = fmax(BESIDE_LENGTHS * length, BESIDE_LEAST_D);
-    size_t inside = dip_first_not_before(task->time, task->n, task->starts_d);
-    size_t after = dip_first_not_before(task->time, task->n, nextafter(task->ends_d, INFINITY));
+    size_t inside = lightcurve_first_not_before(task->time, 0, task->n, task->starts_d);
+    size_t after =
+        lightcurve_first_not_before(task->time, 0, task->n, nextafter(task->ends_d, INFINITY));
     if (after < inside + INSIDE_LEAST)
         return false;
-    size_t least = dip_first_not_before(task->time, task->n, task->starts_d - beside);
-    size_t most = dip_first_not_before(task->time, task->n, task->ends_d + beside);
+    size_t least = lightcurve_first_not_before(task->time, 0, task->n, task->starts_d - beside);
+    size_t most = lightcurve_first_not_before(task->time, 0, task->n, task->ends_d + beside);
     task->first = inside;
     while (task->first > least &&
            task->time[task->first] - task->time[task->first - 1] <= task->gap_d)

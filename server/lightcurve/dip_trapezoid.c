@@ -8,6 +8,7 @@
 #include <string.h>
 
 #include "dip.h"
+#include "robust.h"
 
 #define ROUNDS_MOST 100
 #define SHAKES_MOST 4
@@ -109,7 +110,8 @@ static void look_at(const struct dip_points *points, const vector p, struct slop
     size_t edge[6] = {0};
     edge[5] = points->count;
     for (int c = 0; c < 4; c++)
-        edge[c + 1] = dip_first_not_before(points->time, points->count, p[DIP_MID] + contact[c]);
+        edge[c + 1] =
+            lightcurve_first_not_before(points->time, 0, points->count, p[DIP_MID] + contact[c]);
     *at = (struct slope_of_chi2){0};
     add_constant(points, p, edge[0], edge[1], 0.0, at);
     add_ramp(points, p, edge[1], edge[2], at);

@@ -109,3 +109,15 @@ size_t lightcurve_stretch_end(const double *time, size_t n, size_t first, double
         end++;
     return end;
 }
+
+size_t lightcurve_first_not_before(const double *time, size_t low, size_t high, double at)
+{
+    while (low < high) {
+        size_t middle = low + (high - low) / 2;
+        if (time[middle] < at)
+            low = middle + 1;
+        else
+            high = middle;
+    }
+    return low;
+}

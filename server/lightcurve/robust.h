@@ -26,4 +26,7 @@ double lightcurve_biweight(double *values, size_t n, double *scratch);
  * gap_d, or the data end. */
 size_t lightcurve_stretch_end(const double *time, size_t n, size_t first, double gap_d);
 
+/* The first of time[low … high-1] (increasing) that is not before `at`; high when all are. */
+size_t lightcurve_first_not_before(const double *time, size_t low, size_t high, double at);
+
 #endif
