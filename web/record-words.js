@@ -24,7 +24,8 @@ export function skillSentence(skill) {
         );
     const hit =
         `By the latest estimate you mark about ${format.percent(skill.hit.value)} of ` +
-        `the dips you are shown (90 % interval: ${between(skill.hit)})`;
+        `the dips of middling strength (SNR 10) that you are shown (90 % interval: ` +
+        `${between(skill.hit)})`;
     if (!known(skill.chance)) return `${hit}.`;
     return (
         `${hit}, and about ${format.percent(skill.chance.value)} of the places that others ` +

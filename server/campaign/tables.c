@@ -60,7 +60,7 @@
     X(looks, INTEGER, integer, row->looks, "", "meta.number", 0, "Segments looked at.") \
     X(marks, INTEGER, integer, row->marks, "", "meta.number", 0, "Marks drawn.") \
     X(days_looked, REAL, real, row->days_looked, "d", "time.duration", 6, "Length of light curve looked at.") \
-    X(hit, REAL, real, row->hit, "", "stat.probability", 6, "Estimated rate of marking a dip that is there.") \
+    X(hit, REAL, real, row->hit, "", "stat.probability", 6, "Estimated rate of marking a dip of SNR 10 that is there.") \
     X(hit_low, REAL, real, row->hit_low, "", "stat.probability;stat.min", 6, "Lower end of hit's 90 % interval.") \
     X(hit_high, REAL, real, row->hit_high, "", "stat.probability;stat.max", 6, "Upper end of hit's 90 % interval.") \
     X(chance, REAL, real, row->chance, "", "stat.probability", 6, "Estimated rate of marking what others marked and is no dip.") \

@@ -1,4 +1,5 @@
 import assert from 'node:assert/strict';
+import { readFile } from 'node:fs/promises';
 import test from 'node:test';
 import { flagSentences, termsSentence } from '../../../web/candidates-closer.js';
 import * as questions from '../../../web/candidates-question.js';
@@ -49,7 +50,7 @@ test('skill is one sentence with its interval, or not known yet', () => {
     const text = skillSentence({ hit: rate(0.71, 0.52, 0.85), chance: rate(0.08, 0.02, 0.2) });
     assert.equal(
         text,
-        'By the latest estimate you mark about 71\u00a0% of the dips you are shown (90 % interval: 52 to 85\u00a0%), and about 8\u00a0% of the places that others marked but that are no dip (2 to 20\u00a0%).'
+        'By the latest estimate you mark about 71\u00a0% of the dips of middling strength (SNR 10) that you are shown (90 % interval: 52 to 85\u00a0%), and about 8\u00a0% of the places that others marked but that are no dip (2 to 20\u00a0%).'
     );
     const unknown = /** @type {any} */ ({ value: null, low: null, high: null });
     assert.match(skillSentence({ hit: unknown, chance: unknown }), /^Not known yet/);
@@ -118,6 +119,16 @@ test('a click on a heading sorts the useful way first, and the other way next', 
     assert.equal(questions.sortedBy('snr', 'star'), 'star');
     assert.equal(questions.sortState('-snr', 'snr'), 'descending');
     assert.equal(questions.sortState('-snr', 'star'), 'none');
+});
+
+test('every flag that the program knows has the program’s own sentence', async () => {
+    const header = await readFile(
+        new URL('../../../include/ebbmark/campaign.h', import.meta.url),
+        'utf8'
+    );
+    const table = [...header.matchAll(/X\(\d+,\s*(\w+),\s*"([^"]+)"\)/g)];
+    assert.ok(table.length >= 6);
+    for (const [, name, sentence] of table) assert.deepEqual(flagSentences(name), [sentence]);
 });
 
 test('flags are sentences, and one that is new is shown by its name', () => {
