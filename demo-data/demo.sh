@@ -5,6 +5,7 @@ set -euo pipefail
 program=$(realpath "$1")
 mode=$2
 data=$(cd "$(dirname "$0")" && pwd)
+cd "$data/.."
 place=build/demo
 database=$place/campaign.db
 server_pid=

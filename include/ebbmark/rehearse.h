@@ -18,7 +18,7 @@ struct rehearse_feature {
     double starts_d, ends_d; /* in the segment's time */
     double depth;            /* relative */
     double snr;              /* depth over the error of the mean, > 0 */
-    double asymmetry;        /* (second half - first half) / depth, as a shape clue */
+    double asymmetry;        /* |second half - first half| / depth, as a shape clue, >= 0 */
 };
 
 #define REHEARSE_FEATURES_MAX 40
