@@ -32,8 +32,7 @@ enum http_result {
 };
 
 enum http_flags {
-    HTTP_SLOW = 1,   /* runs on a worker: reads much, hashes a passphrase, writes */
-    HTTP_NO_CSRF = 2 /* a change that needs no Ebbmark-Request header (none by default) */
+    HTTP_SLOW = 1, /* runs on a worker: reads much, hashes a passphrase, writes */
 };
 
 /* A route stands beside its handler. `path` may hold {names}. Changes (POST, PATCH, DELETE) that
@@ -125,7 +124,6 @@ const struct http_problem_kind *http_problem_kinds(size_t *count);
 
 struct base_arena *http_arena(struct http_exchange *exchange); /* freed after the answer is sent */
 const struct http_identity *http_identity(const struct http_exchange *exchange);
-const char *http_request_id(const struct http_exchange *exchange);
 struct http_server *http_server_of(struct http_exchange *exchange);
 const char *http_path_part(struct http_exchange *exchange,
                            const char *name);                              /* decoded; never NULL */

@@ -20,8 +20,6 @@ bool base_pool_open(struct base_pool **out, unsigned threads, size_t queue_limit
 /* Finish what is queued, join the threads, free. NULL is allowed. */
 void base_pool_close(struct base_pool *pool);
 
-unsigned base_pool_threads(const struct base_pool *pool);
-
 /* Queue work(context) for some worker. False (BASE_BUSY) when the queue is full. Thread-safe. */
 bool base_pool_submit(struct base_pool *pool, void (*work)(void *context), void *context,
                       struct base_error *error);

@@ -50,7 +50,4 @@ extern const unsigned campaign_setting_count;
 /* The value of row `index` of the table; every setting is a number. */
 double campaign_setting_value(const struct campaign_settings *settings, unsigned index);
 
-/* Every setting at its default. */
-struct campaign_settings campaign_settings_standard(void);
-
 #endif

@@ -32,9 +32,8 @@ struct store;
 /* ---- opening ---------------------------------------------------------------------------- */
 
 struct store_options {
-    unsigned readers;         /* reading connections, default 4 */
-    bool must_exist;          /* do not create */
-    bool migrate_only_if_new; /* refuse (BASE_CONFLICT) an older database instead of migrating it */
+    unsigned readers; /* reading connections, default 4 */
+    bool must_exist;  /* do not create */
 };
 
 /* Open or create the database: take the lock (FILE.lock, flock; held until close), check that it is
@@ -110,7 +109,7 @@ bool store_access_add(struct store *store, enum store_access kind,
                       struct base_error *error);
 struct store_access_found {
     int64_t person;
-    enum store_role role; /* the lower of the person's and the token's */
+    enum store_role role; /* the person's; of a token the lower of the person's and its own */
     int64_t ends_ms;
     bool suspended;
 };
@@ -215,8 +214,6 @@ struct store_star {
 };
 bool store_star_by_name(struct store *store, struct base_arena *arena, const char *name,
                         struct store_star *out, struct base_error *error);
-bool store_star_by_id(struct store *store, struct base_arena *arena, int64_t id,
-                      struct store_star *out, struct base_error *error);
 bool store_stars_list(struct store *store, struct base_arena *arena, int64_t after, size_t limit,
                       struct store_star **out, size_t *count, struct base_error *error);
 
@@ -406,6 +403,7 @@ struct store_skill {
     const char *handle; /* on reading only */
     int64_t looks, marks;
     double days_looked;
+    /* At a dip of SNR 10; at what others marked and is no dip; with 90 % intervals. */
     double hit, hit_low, hit_high, chance, chance_low, chance_high, weight;
 };
 struct store_run_new {

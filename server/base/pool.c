@@ -124,11 +124,6 @@ void base_pool_close(struct base_pool *pool)
     free(pool);
 }
 
-unsigned base_pool_threads(const struct base_pool *pool)
-{
-    return pool->threads;
-}
-
 bool base_pool_submit(struct base_pool *pool, void (*work)(void *context), void *context,
                       struct base_error *error)
 {

@@ -31,7 +31,7 @@ double campaign_setting_value(const struct campaign_settings *settings, unsigned
     return values[index];
 }
 
-struct campaign_settings campaign_settings_standard(void)
+static struct campaign_settings settings_standard(void)
 {
     return (struct campaign_settings){
 #define X(name, kind, standard, least, most, unit, sentence) .name = (standard),
@@ -108,7 +108,7 @@ static void take_stored(struct campaign *campaign, const struct store_setting *s
 
 bool settings_read(struct campaign *campaign, struct base_error *error)
 {
-    campaign->settings = campaign_settings_standard();
+    campaign->settings = settings_standard();
     struct base_arena *arena = base_arena_new(0);
     if (arena == NULL)
         return base_fail(error, BASE_MEMORY, "There is no memory to read the settings.");
@@ -120,7 +120,7 @@ bool settings_read(struct campaign *campaign, struct base_error *error)
     struct base_error unfit;
     if (ok && !fit_together(&campaign->settings, "", &unfit)) {
         campaign_tell(campaign, BASE_LOG_WARNING, "settings_do_not_fit", "detail", unfit.sentence);
-        campaign->settings = campaign_settings_standard();
+        campaign->settings = settings_standard();
     }
     base_arena_free(arena);
     return ok;

@@ -154,8 +154,7 @@ static bool check_origin(struct http_exchange *exchange)
 {
     const char *site = exchange->known[HTTP_KNOWN_FETCH_SITE];
     const char *ours = exchange->known[HTTP_KNOWN_OUR_REQUEST];
-    if (is_reading(exchange->method) || (exchange->route->flags & HTTP_NO_CSRF) != 0 ||
-        exchange->identity.by_token)
+    if (is_reading(exchange->method) || exchange->identity.by_token)
         return true;
     if (exchange->has_cookie && (ours == NULL || strcmp(ours, "1") != 0))
         (void)http_answer_problem(exchange, "missing_request_header", NULL,

@@ -21,11 +21,6 @@ const struct http_identity *http_identity(const struct http_exchange *exchange)
     return &exchange->identity;
 }
 
-const char *http_request_id(const struct http_exchange *exchange)
-{
-    return exchange->id;
-}
-
 struct http_server *http_server_of(struct http_exchange *exchange)
 {
     return exchange->server;

@@ -53,8 +53,7 @@ static bool file_make(const char *path, struct base_error *error)
     return true;
 }
 
-static bool open_writer(struct store *store, const struct store_options *options,
-                        struct base_error *error)
+static bool open_writer(struct store *store, struct base_error *error)
 {
     enum header_kind kind;
     if (!header_read(store->path, &kind, error) ||
@@ -67,11 +66,6 @@ static bool open_writer(struct store *store, const struct store_options *options
     if (!migrate_check(store, error))
         return false;
     (void)sqlite3_db_config(store->writer.handle, careful, 0, NULL);
-    if (options->migrate_only_if_new && store->version > 0 &&
-        store->version < store_version_newest())
-        return base_fail(error, BASE_CONFLICT,
-                         "%s is at version %d and this program at %d; run `ebbmark migrate` first.",
-                         store->path, store->version, store_version_newest());
     /* About 40 MB of WAL before it is copied into the database, and at most 64 MB kept after a
      * long read has let it grow. */
     return db_script(&store->writer,
@@ -89,7 +83,7 @@ static bool open_parts(struct store *store, const struct store_options *options,
         !lock_take(store->path, &store->lock_file, error))
         return false;
     struct base_error why = {0};
-    bool ok = open_writer(store, options, &why) &&
+    bool ok = open_writer(store, &why) &&
               readers_open(store, readers < READERS_MAX ? readers : READERS_MAX, &why);
     if (!ok && error != NULL)
         *error = why;

@@ -31,13 +31,6 @@ bool store_star_by_name(struct store *store, struct base_arena *arena, const cha
                   STAR "WHERE s.name = ?", "t", name);
 }
 
-bool store_star_by_id(struct store *store, struct base_arena *arena, int64_t id,
-                      struct store_star *out, struct base_error *error)
-{
-    return db_row(store, arena, fill_star, out, "There is no such star.", error,
-                  STAR "WHERE s.id = ?", "i", id);
-}
-
 bool store_stars_list(struct store *store, struct base_arena *arena, int64_t after, size_t limit,
                       struct store_star **out, size_t *count, struct base_error *error)
 {

@@ -173,7 +173,6 @@ static const struct http_route second_table[] = {
     {"GET", "/science/{part}", HTTP_SCIENCE, 0, 0, echo},
     {"POST", "/change/{part}", HTTP_REVIEWER, 0, 1000, echo},
     {"DELETE", "/change/{part}", HTTP_REVIEWER, 0, 0, echo},
-    {"POST", "/open-change/{part}", HTTP_REVIEWER, HTTP_NO_CSRF, 0, echo},
     {0}};
 static const struct http_route *const tables[] = {first_table, second_table, NULL};
 
@@ -816,7 +815,6 @@ static void a_change_by_cookie_needs_our_own_header(void **state)
                 {"DELETE", "/change/x",
                  REVIEWER "Ebbmark-Request: 1 \r\nSec-Fetch-Site: same-origin\r\n", 200},
                 {"POST", "/change/x", "Authorization: Bearer script\r\n", 200},
-                {"POST", "/open-change/x", REVIEWER, 200},
                 {"GET", "/for/x", REVIEWER "Sec-Fetch-Site: cross-site\r\n", 200},
                 {"POST", "/cookie", "Sec-Fetch-Site: none\r\n", 204}};
     for (size_t i = 0; i < sizeof fine / sizeof fine[0]; i++) {

@@ -301,24 +301,6 @@ static void a_migration_whose_backup_cannot_be_made_is_not_begun(void **state)
     assert_int_equal(number_of(place->path, "PRAGMA user_version"), store_version_newest());
 }
 
-static void an_older_database_is_not_migrated_where_that_was_not_asked_for(void **state)
-{
-    struct place *place = *state;
-    struct store *store = NULL;
-    const struct store_options careful = {.readers = 1, .migrate_only_if_new = true};
-    close_store(place);
-    must(store_open(place->path, &careful, &store, &error)); /* of this version: opened */
-    store_close(store);
-    const char *fresh = in_folder(place, "fresh.db");
-    must(store_open(fresh, &careful, &store, &error)); /* new: made */
-    assert_int_equal(store_version(store), store_version_newest());
-    store_close(store);
-    if (store_version_newest() > 1) {
-        run_sql(fresh, "PRAGMA user_version = 1");
-        must_fail(store_open(fresh, &careful, &store, &error), BASE_CONFLICT);
-    }
-}
-
 int main(void)
 {
     const struct CMUnitTest tests[] = {
@@ -335,7 +317,6 @@ int main(void)
         IN_PLACE(a_migration_makes_a_whole_backup_first_and_is_recorded),
         IN_PLACE(a_migration_that_fails_changes_nothing_and_can_be_tried_again),
         IN_PLACE(a_migration_whose_backup_cannot_be_made_is_not_begun),
-        IN_PLACE(an_older_database_is_not_migrated_where_that_was_not_asked_for),
     };
     return cmocka_run_group_tests_name("store: opening and migrating", tests, NULL, NULL);
 }
